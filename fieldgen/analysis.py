@@ -1,0 +1,310 @@
+"""A day's stations -> what their field looks like: scale height, covariance, and who is trusted.
+
+Every day is analysed by itself from a window of hours that ends with it, so that days can be made
+in any order, alone or together, and come out the same.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+import xarray as xr
+
+from fieldgen.kriging.covariance import Covariance
+from fieldgen.kriging.fitting import (
+    CovarianceFit,
+    ScaleHeight,
+    fit_covariance,
+    fit_scale_height,
+)
+from fieldgen.kriging.solver import Gaps, Kriging, PlaceMaker, Places
+from fieldgen.settings import KrigingTable, ScreeningTable, Settings
+from fieldgen.station.heights import reduction_factor
+from fieldgen.station.screening import (
+    STATION_FLAGS,
+    biased_station,
+    disagreements,
+    often_gone,
+)
+
+MINIMUM_STATIONS = 5
+"""An hour with fewer usable stations is written as missing."""
+
+EXCESS_RATIO = 1.5
+"""An hour whose error variance is above this many times the station's usual one has its own."""
+
+ROUNDS = 2
+"""Fits and screenings in turn: what the first screening throws out has spoilt the first fit."""
+
+
+@dataclass(frozen=True)
+class Window:
+    """The stations that report in a window of hours.
+
+    index : (n,) into the network's stations
+    pwv, sigma : (t, n) [kg m-2] at the stations' own heights, NaN where a series test failed
+    height : (n,) orthometric [m]
+    """
+
+    index: np.ndarray
+    pwv: np.ndarray
+    sigma: np.ndarray
+    height: np.ndarray
+    places: Places
+    maker: PlaceMaker
+    reference_height: float
+
+    def at_reference(self, scale_height):
+        """Values and error variances (t, n) at the reference height; scale_height (t,) [m]."""
+        factor = reduction_factor(self.height, self.reference_height, scale_height[:, None])
+        variance = np.where(np.isfinite(self.pwv), (self.sigma / factor) ** 2, np.nan)
+        return self.pwv / factor, variance
+
+
+@dataclass(frozen=True)
+class Model:
+    """What the field of a window looks like.
+
+    scale_height, scale_height_sigma : (t,) [m]
+    values, excess : (t, n) at the reference height [kg m-2], [kg2 m-4]; values NaN where not
+        trusted
+    gaps : one an hour
+    """
+
+    fit: CovarianceFit
+    kriging: Kriging
+    scale_height: np.ndarray
+    scale_height_sigma: np.ndarray
+    values: np.ndarray
+    excess: np.ndarray
+    gaps: list[Gaps]
+
+
+@dataclass(frozen=True)
+class Day:
+    """Everything that makes one day's fields; t hours, all stations of the network.
+
+    window, model : None where too few stations report; their hours are those of the day
+    makable : (t,) bool, hours with enough stations
+    stations : Dataset (time, station) of the day with the final flag and the residual of leaving
+        each station out
+    """
+
+    window: Window | None
+    model: Model | None
+    makable: np.ndarray
+    stations: xr.Dataset
+
+
+def reference_height(settings: Settings, stations: xr.Dataset) -> float:
+    """The height [m] that water vapour is reduced to: a setting, or the stations' median."""
+    if settings.heights.reference_height != "auto":
+        return float(settings.heights.reference_height)
+    return float(np.round(np.median(stations.orthometric_height.values), -1))
+
+
+def analyse_day(settings: Settings, stations: xr.Dataset, first: int, last: int) -> Day:
+    """Analysis of the hours first <= index < last of `stations`, all of one day.
+
+    stations : what `retrieve_water_vapour` returns, with the window before the day
+    """
+    step = settings.network.time_step
+    start = max(last - int(settings.kriging.window / step), 0)
+    start = min(start, first)
+    window = _make_window(settings, stations, slice(start, last))
+    day = slice(first - start, last - start)
+    of_day = stations.isel(time=slice(first, last))
+    if window is None:
+        nothing = np.full(of_day.flag.shape, np.nan)
+        return Day(None, None, np.zeros(last - first, bool), _assign(of_day, 0, nothing, nothing))
+    model, disagree, out = _model_window(settings, window)
+    window, model = _cut(window, model, day)
+    of_day = _with_tests(of_day, window, model, disagree[day], out)
+    return Day(window, model, _makable(window, model), of_day)
+
+
+def _make_window(settings: Settings, stations: xr.Dataset, rows: slice) -> Window | None:
+    """Window of the rows of time; None if fewer than two stations report in it."""
+    piece = stations.isel(time=rows)
+    usable = np.where(piece.flag.values == 0, piece.pwv.values, np.nan)
+    index = np.flatnonzero(np.isfinite(usable).any(axis=0))
+    if len(index) < 2:
+        return None
+    near = piece.isel(station=index)
+    place = near.longitude.values, near.latitude.values
+    maker = PlaceMaker(*place, settings.kriging.drift)
+    return Window(
+        index=index,
+        pwv=usable[:, index],
+        sigma=near.pwv_sigma.values,
+        height=near.orthometric_height.values,
+        places=maker.places(*place),
+        maker=maker,
+        reference_height=reference_height(settings, stations),
+    )
+
+
+def _model_window(settings: Settings, window: Window):
+    """Model of a window, its disagreements (t, n) bool and condemned stations (n,) bool."""
+    present = np.isfinite(window.pwv)
+    trusted = present
+    scale = np.full(len(window.pwv), settings.heights.prior)
+    for _ in range(ROUNDS):
+        model = _fit_model(settings, window, trusted, scale)
+        disagree, out = _screen(settings.screening, window, model)
+        trusted = present & ~disagree & ~out
+        scale = model.scale_height
+    return _fit_model(settings, window, trusted, scale), disagree, out
+
+
+def _fit_model(settings: Settings, window: Window, trusted, scale) -> Model:
+    """Covariance for given scale heights, then the scale heights of that covariance."""
+    values, variance = window.at_reference(scale)
+    values = np.where(trusted, values, np.nan)
+    fit = _fit_covariance(settings.kriging, values, variance, window.places)
+    kriging = Kriging(fit.covariance, window.places, _usual(variance))
+    scale, sigma = _fit_scale_heights(settings, window, kriging, values, trusted)
+    values, variance = window.at_reference(scale)
+    usual = _usual(variance)
+    excess = np.nan_to_num(np.where(variance > EXCESS_RATIO * usual, variance - usual, 0.0))
+    kriging = Kriging(fit.covariance, window.places, usual)
+    gaps = [kriging.gaps(~row, more) for row, more in zip(trusted, excess, strict=True)]
+    return Model(fit, kriging, scale, sigma, np.where(trusted, values, np.nan), excess, gaps)
+
+
+def _fit_covariance(table: KrigingTable, values, variance, places: Places) -> CovarianceFit:
+    if table.partial_sill is not None:
+        fixed = Covariance(table.covariance, table.partial_sill, table.range, table.nugget)
+        return CovarianceFit(fixed, False, "as set")
+    return fit_covariance(values, variance, places, table.covariance)
+
+
+def _usual(variance):
+    """Usual error variance (n,) of each station: its median over the hours."""
+    return np.nanmedian(variance, axis=0)
+
+
+def _fit_scale_heights(settings: Settings, window: Window, kriging: Kriging, values, trusted):
+    """Scale height and its standard error (t,) [m], each hour from its own stations."""
+    heights = settings.heights
+    count = len(values)
+    if heights.scale_height != "estimated":
+        return np.full(count, heights.scale_height), np.full(count, heights.prior_sigma)
+    prior = ScaleHeight(heights.prior, heights.prior_sigma)
+    found = [prior] * count
+    for hour in np.flatnonzero(trusted.sum(axis=1) >= MINIMUM_STATIONS):
+        found[hour] = fit_scale_height(
+            kriging,
+            kriging.gaps(~trusted[hour]),
+            np.where(trusted[hour], window.pwv[hour], np.nan),
+            window.height,
+            max(float(np.nanmean(values[hour])), 1.0),
+            prior,
+        )
+    return np.array([one.value for one in found]), np.array([one.sigma for one in found])
+
+
+def _screen(limits: ScreeningTable, window: Window, model: Model):
+    """Values (t, n) that their neighbours contradict, and condemned stations (n,).
+
+    Stations that are biased as a whole go first, the worst of them before the others.
+    """
+    values, _ = window.at_reference(model.scale_height)
+    out = np.zeros(values.shape[1], bool)
+    while (worst := _worst_station(limits, model, np.where(out, np.nan, values))) is not None:
+        out[worst] = True
+    rest = np.where(out, np.nan, values)
+    disagree = np.stack(
+        [
+            disagreements(
+                model.kriging,
+                row,
+                more,
+                ratio=limits.neighbour_ratio,
+                difference=limits.neighbour_difference,
+                minimum=MINIMUM_STATIONS,
+            )
+            for row, more in zip(rest, model.excess, strict=True)
+        ]
+    )
+    return disagree, out | often_gone(disagree, np.isfinite(rest), limits.condemn_share)
+
+
+def _worst_station(limits: ScreeningTable, model: Model, values) -> int | None:
+    """The station most biased against the others over the window, if enough are left to tell."""
+    if np.isfinite(values).any(axis=0).sum() <= MINIMUM_STATIONS:
+        return None
+    gaps = [
+        model.kriging.gaps(np.isnan(row), more)
+        for row, more in zip(values, model.excess, strict=True)
+    ]
+    found = [
+        model.kriging.leave_one_out(row, gap)
+        for row, gap in zip(values, gaps, strict=True)
+        if np.isfinite(row).sum() > MINIMUM_STATIONS
+    ]
+    if not found:
+        return None
+    residual, sigma = (np.stack(part) for part in zip(*found, strict=True))
+    return biased_station(
+        residual, sigma, ratio=limits.bias_ratio, difference=limits.neighbour_difference
+    )
+
+
+def _cut(window: Window, model: Model, day: slice) -> tuple[Window, Model]:
+    """The same with the hours of the day alone."""
+    cut_window = replace(window, pwv=window.pwv[day], sigma=window.sigma[day])
+    cut_model = replace(
+        model,
+        scale_height=model.scale_height[day],
+        scale_height_sigma=model.scale_height_sigma[day],
+        values=model.values[day],
+        excess=model.excess[day],
+        gaps=model.gaps[day],
+    )
+    return cut_window, cut_model
+
+
+def _makable(window: Window, model: Model):
+    """Hours (t,) bool with enough stations, and with enough places for the drift."""
+    present = np.isfinite(model.values)
+    functions = window.places.drift
+    spans = [np.linalg.matrix_rank(functions[row]) == functions.shape[1] for row in present]
+    return (present.sum(axis=1) >= MINIMUM_STATIONS) & np.array(spans)
+
+
+def _with_tests(stations: xr.Dataset, window: Window, model: Model, disagree, out) -> xr.Dataset:
+    """The day's stations with the flags of the tests between them and their residuals."""
+    shape = stations.flag.shape
+    bits = np.zeros(shape, stations.flag.dtype)
+    has_value = np.isfinite(window.pwv)
+    bits[:, window.index] = STATION_FLAGS["disagrees_with_neighbours"] * disagree
+    bits[:, window.index] |= STATION_FLAGS["condemned"] * (out & has_value)
+    residual, sigma = np.full(shape, np.nan), np.full(shape, np.nan)
+    at_reference, _ = window.at_reference(model.scale_height)
+    factor = window.pwv / at_reference
+    for hour in np.flatnonzero(_makable(window, model)):
+        found = _residuals(model, hour, at_reference[hour])
+        residual[hour, window.index], sigma[hour, window.index] = found * factor[hour]
+    return _assign(stations, bits, residual, sigma)
+
+
+def _residuals(model: Model, hour: int, at_reference):
+    """Residual and its standard deviation (2, n) of leaving out each station, trusted or not."""
+    values, gaps = model.values[hour], model.gaps[hour]
+    residual, sigma = model.kriging.leave_one_out(values, gaps)
+    out = np.isnan(values)
+    predicted = model.kriging.fill(gaps, values)
+    own = np.zeros(len(values))
+    own[gaps.changed] = np.sqrt(np.diag(gaps.update))
+    return np.array([np.where(out, at_reference - predicted, residual), np.where(out, own, sigma)])
+
+
+def _assign(stations: xr.Dataset, bits, residual, sigma) -> xr.Dataset:
+    dimensions = ("time", "station")
+    return stations.assign(
+        flag=(dimensions, stations.flag.values | bits),
+        residual=(dimensions, residual),
+        residual_sigma=(dimensions, sigma),
+    )

@@ -1,0 +1,92 @@
+"""The story of a run: read, retrieve, then for every day analyse, make its fields, write them."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from concurrent.futures import ProcessPoolExecutor
+from pathlib import Path
+
+import numpy as np
+import xarray as xr
+
+from fieldgen.day_maker import DayMaker, DayWriter, colour_limits
+from fieldgen.fields import join_fields
+from fieldgen.period import Piece, pieces
+from fieldgen.readers.network import Network
+from fieldgen.report import DayReport, RunReport
+from fieldgen.retrieval import retrieve_water_vapour
+
+
+def make_fields(network: Network, start: str | None = None, end: str | None = None) -> xr.Dataset:
+    """Fields of a network's hours, the same Dataset as the field files hold.
+
+    start, end : ISO 8601 UTC, by default all hours of the input. Dimensions time, y, x; see
+    `fieldgen.products.field_file.field_dataset`. Hours with too few stations are NaN and flagged.
+    Raises InputError if the period is reversed or holds no step of the input.
+    """
+    maker = DayMaker(network, retrieve_water_vapour(network))
+    made = [maker.compute(piece) for piece in _pieces(network, start, end)]
+    time = np.concatenate([day.stations.time.values for day, _ in made])
+    return maker.field_dataset(time, join_fields([fields for _, fields in made]))
+
+
+def make(
+    network: Network,
+    folder: Path,
+    *,
+    start: str | None = None,
+    end: str | None = None,
+    jobs: int = 1,
+    progress: Callable[[str, int], None] = lambda piece, count: None,
+) -> RunReport:
+    """Field, station and map files of a period, written below `folder`, with run.json.
+
+    jobs : processes that share the days; results do not depend on it
+    progress : called with the name of each day when it is done, and the number of days
+    Raises InputError if the period is empty, OutputError if the folder cannot be written.
+    """
+    stations = retrieve_water_vapour(network)
+    days = _pieces(network, start, end)
+    period = stations.isel(time=slice(days[0].first, days[-1].last))
+    limits = colour_limits(network.settings, period)
+    writer = DayWriter(DayMaker(network, stations), folder, limits)
+    reports = []
+    for report in _run(writer, days, _maps_by_day(network.settings.products.maps, days), jobs):
+        reports.append(report)
+        progress(report.name, len(days))
+    run = RunReport.of(network, folder, reports)
+    run.write(folder / "run.json")
+    return run
+
+
+def _pieces(network: Network, start: str | None, end: str | None) -> list[Piece]:
+    step = np.timedelta64(int(network.settings.network.time_step.total_seconds()), "s")
+    return pieces(network.delays.time.values, step, start, end)
+
+
+def _maps_by_day(maps: str, days: list[Piece]) -> list[str]:
+    """Which maps each day draws: the latest one belongs to the last day."""
+    return ["none"] * (len(days) - 1) + ["latest"] if maps == "latest" else [maps] * len(days)
+
+
+def _run(writer: DayWriter, days, maps, jobs: int) -> Iterator[DayReport]:
+    """Reports of the days in their order, from one process or several."""
+    workers = min(jobs, len(days))
+    if workers == 1:
+        yield from map(writer, days, maps)
+        return
+    with ProcessPoolExecutor(workers, initializer=_take_writer, initargs=(writer,)) as pool:
+        yield from pool.map(_write_day, days, maps)
+
+
+_writer: DayWriter | None = None
+"""The writer of a process of the pool, handed over once instead of with every day."""
+
+
+def _take_writer(writer: DayWriter) -> None:
+    global _writer
+    _writer = writer
+
+
+def _write_day(piece: Piece, maps: str) -> DayReport:
+    return _writer(piece, maps)

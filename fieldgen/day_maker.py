@@ -1,0 +1,147 @@
+"""One day: its fields, and its files."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+import xarray as xr
+from threadpoolctl import threadpool_limits
+
+from fieldgen.analysis import Day, analyse_day, reference_height
+from fieldgen.constants import REFRACTIVITY
+from fieldgen.fields import FIELD_FLAGS, Fields, make_fields_of_day
+from fieldgen.period import Piece
+from fieldgen.products.field_file import field_dataset, write_fields
+from fieldgen.products.station_file import station_dataset, write_stations
+from fieldgen.readers.network import Network
+from fieldgen.report import DayReport, report_day
+from fieldgen.settings import Settings
+from fieldgen.station.heights import reduction_factor
+from fieldgen.station.screening import STATION_FLAGS
+from fieldgen.station.surface_air import PRESSURE_SOURCES
+
+LIMITS_WITHOUT_DATA = (0.0, 50.0)
+"""Colour limits where no station has a value [kg m-2]."""
+
+
+@dataclass(frozen=True)
+class DayMaker:
+    """Makes the days of a network.
+
+    stations : what `fieldgen.retrieval.retrieve_water_vapour` returns
+    """
+
+    network: Network
+    stations: xr.Dataset
+
+    def compute(self, piece: Piece) -> tuple[Day, Fields]:
+        """Model and fields of a day."""
+        network = self.network
+        with threadpool_limits(1):  # results must not depend on how BLAS splits its sums
+            day = analyse_day(network.settings, self.stations, piece.first, piece.last)
+            return day, make_fields_of_day(network.settings, network.grid, network.terrain, day)
+
+    def field_dataset(self, time, fields: Fields) -> xr.Dataset:
+        """Fields (t, ny, nx) of one or several days with all their metadata."""
+        network = self.network
+        return field_dataset(
+            grid=network.grid,
+            terrain_height=network.terrain.mean,
+            time=time,
+            fields=fields,
+            flag_bits=FIELD_FLAGS,
+            network=network.settings.network,
+            reference_height=reference_height(network.settings, self.stations),
+            processing=describe_processing(network.settings),
+        )
+
+    def station_dataset(self, day: Day) -> xr.Dataset:
+        """Stations of a day with all their metadata."""
+        return station_dataset(
+            day.stations,
+            network=self.network.settings.network,
+            flag_bits=STATION_FLAGS,
+            pressure_sources=PRESSURE_SOURCES,
+        )
+
+
+@dataclass(frozen=True)
+class DayWriter:
+    """Makes days and writes their files below a folder; limits: of the maps' colours [kg m-2]."""
+
+    maker: DayMaker
+    folder: Path
+    limits: tuple[float, float]
+
+    def __call__(self, piece: Piece, maps: str) -> DayReport:
+        """Make, write and draw one day; maps: which of its hours are drawn."""
+        day, fields = self.maker.compute(piece)
+        dataset = self.maker.field_dataset(day.stations.time.values, fields)
+        stations = self.maker.station_dataset(day)
+        paths = [
+            self.folder / "fields" / f"pwv_{piece.name}.nc",
+            self.folder / "stations" / f"stations_{piece.name}.nc",
+        ]
+        write_fields(dataset, paths[0])
+        write_stations(stations, paths[1])
+        if maps != "none":
+            paths += self._draw(dataset, stations, maps)
+        files = [str(path.relative_to(self.folder)) for path in paths]
+        return report_day(piece.name, day, fields, files)
+
+    def _draw(self, dataset: xr.Dataset, stations: xr.Dataset, maps: str) -> list[Path]:
+        from fieldgen.products.maps import write_maps
+
+        if maps == "latest":
+            dataset, stations = dataset.isel(time=[-1]), stations.isel(time=[-1])
+        return write_maps(dataset, stations, self.folder / "maps", self._painter(dataset))
+
+    def _painter(self, dataset: xr.Dataset):
+        """The painter of this process, its base drawn for the first day and kept."""
+        if "painter" not in self.__dict__:
+            self.__dict__["painter"] = self._make_painter(dataset)
+        return self.__dict__["painter"]
+
+    def _make_painter(self, dataset: xr.Dataset):
+        from fieldgen.products.maps import MapPainter, read_geometries
+
+        settings = self.maker.network.settings
+        lines = {
+            name: read_geometries(settings.path(path))
+            for name in ("coast", "rivers")
+            if (path := getattr(settings.products, name)) is not None
+        }
+        return MapPainter(dataset, network_name=settings.network.name, limits=self.limits, **lines)
+
+
+def colour_limits(settings: Settings, stations: xr.Dataset) -> tuple[float, float]:
+    """Limits of the maps' colours [kg m-2]: a setting, or whole fives around the stations' values.
+
+    stations : of the period that is drawn
+    """
+    if settings.products.limits != "auto":
+        return settings.products.limits
+    used = stations.pwv.values[stations.flag.values == 0]
+    if not len(used):
+        return LIMITS_WITHOUT_DATA
+    factor = reduction_factor(stations.orthometric_height.values, 0.0, settings.heights.prior)
+    at_sea_level = (stations.pwv.values / factor)[stations.flag.values == 0]
+    low, high = np.quantile(used, 0.01), np.quantile(at_sea_level, 0.99)
+    return 5.0 * np.floor(low / 5.0), 5.0 * np.ceil(high / 5.0 + 0.2)
+
+
+def describe_processing(settings: Settings) -> str:
+    """How the fields were made, for their metadata."""
+    retrieval, kriging = settings.retrieval, settings.kriging
+    conversion = (
+        f"mean temperature {retrieval.mean_temperature_model.source}"
+        if retrieval.conversion_factor is None
+        else f"conversion factor {retrieval.conversion_factor:g} kg m-2 per m"
+    )
+    return (
+        f"refractivity {REFRACTIVITY[retrieval.refractivity].source}; {conversion}; "
+        f"scale height {settings.heights.scale_height}; {kriging.covariance} covariance, "
+        f"{kriging.drift} drift, engine {kriging.engine}"
+    )

@@ -1,0 +1,24 @@
+"""The tree of errors: one base class, so that the command line can print one line and exit 1.
+
+A message reads ``<where>: <name> is <value with unit>, expected <rule>. <next step>.``
+"""
+
+
+class FieldgenError(Exception):
+    """Any problem that fieldgen can explain to the person who meets it."""
+
+
+class SettingsError(FieldgenError):
+    """The settings file cannot be used; the message lists every problem in it."""
+
+
+class InputError(FieldgenError):
+    """An input file is missing, or holds nothing that can be used."""
+
+
+class GridError(FieldgenError):
+    """The grid and what it should lie on (terrain, stations) do not fit together."""
+
+
+class OutputError(FieldgenError):
+    """A product cannot be written."""

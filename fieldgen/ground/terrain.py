@@ -1,0 +1,138 @@
+"""The terrain under each cell, at several points of the cell, and at the stations."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+import rasterio
+from rasterio.enums import Resampling
+from rasterio.transform import from_bounds
+from rasterio.warp import reproject, transform_bounds
+
+from fieldgen.errors import GridError, InputError
+from fieldgen.ground.grid import Grid
+
+MOST_POINTS = 4
+"""Points along each side of a cell: 16 points describe its relief well enough for the mean of an
+exponential, and more would only cost memory."""
+
+SEA_LEVEL = 0.0
+
+
+@dataclass(frozen=True)
+class Terrain:
+    """Orthometric heights [m] of the ground.
+
+    points (k, ny, nx) : heights at k points spread evenly over each cell; sea and gaps are 0
+    """
+
+    points: np.ndarray
+
+    @property
+    def mean(self):
+        """Mean height (ny, nx) [m] of each cell."""
+        return self.points.mean(axis=0)
+
+    @property
+    def is_sea(self):
+        """Cells (ny, nx) without any land."""
+        return (self.points <= SEA_LEVEL).all(axis=0)
+
+
+def read_terrain(path: Path, grid: Grid) -> Terrain:
+    """Terrain of a raster file (GeoTIFF, NetCDF or another format of GDAL) under a grid.
+
+    Raises InputError if the file cannot be read, GridError if it does not cover the grid.
+    """
+    with _open_raster(path, "terrain") as raster:
+        _check_covers(raster, path, grid)
+        side = min(_pixels_per_cell(raster, grid), MOST_POINTS)
+        fine = _resample(raster, grid, max(round(side), 1), finer=side >= 1)
+    ny, nx = grid.shape
+    side = len(fine) // ny
+    points = fine.reshape(ny, side, nx, side).transpose(1, 3, 0, 2).reshape(-1, ny, nx)
+    return Terrain(np.ascontiguousarray(points))
+
+
+def read_raster_at(path: Path, longitude, latitude, what: str):
+    """Values (n,) of a raster at points [degrees], bilinear; NaN outside it."""
+    with _open_raster(path, what) as raster:
+        return _sample(raster, np.asarray(longitude), np.asarray(latitude))
+
+
+def _open_raster(path: Path, what: str):
+    try:
+        raster = rasterio.open(path)
+    except rasterio.errors.RasterioIOError as error:
+        raise InputError(f"{path}: the {what} file cannot be read as a raster: {error}.") from None
+    if raster.crs is None:
+        raster.close()
+        raise InputError(f"{path}: the {what} file names no CRS. Write one into the file.")
+    return raster
+
+
+def _check_covers(raster, path: Path, grid: Grid) -> None:
+    """The grid's cells must lie inside the raster; its resolution is allowed as slack."""
+    bounds = transform_bounds(grid.crs.to_wkt(), raster.crs, *grid.bounds, densify_pts=21)
+    slack = 1.5 * max(abs(size) for size in raster.res)
+    box = raster.bounds
+    if (
+        bounds[0] < box.left - slack
+        or bounds[1] < box.bottom - slack
+        or bounds[2] > box.right + slack
+        or bounds[3] > box.top + slack
+    ):
+        needed = ", ".join(f"{edge:.6g}" for edge in bounds)
+        held = ", ".join(f"{edge:.6g}" for edge in box)
+        raise GridError(
+            f"{path}: the terrain does not cover the grid: west, south, east, north {held}, "
+            f"expected at least {needed} (units of the terrain file)."
+        )
+
+
+def _pixels_per_cell(raster, grid: Grid) -> float:
+    """Pixels of the raster along the side of a cell."""
+    west, south, east, north = transform_bounds(
+        grid.crs.to_wkt(), raster.crs, *grid.bounds, densify_pts=21
+    )
+    pixels = np.hypot((east - west) / raster.res[0], (north - south) / raster.res[1])
+    return float(pixels / np.hypot(*grid.shape))
+
+
+def _resample(raster, grid: Grid, side: int, *, finer: bool):
+    """Heights (ny * side, nx * side), south row first."""
+    ny, nx = grid.shape
+    heights = np.zeros((ny * side, nx * side), np.float32)
+    reproject(
+        rasterio.band(raster, 1),
+        heights,
+        dst_transform=from_bounds(*grid.bounds, nx * side, ny * side),
+        dst_crs=grid.crs.to_wkt(),
+        dst_nodata=np.nan,
+        resampling=Resampling.average if finer else Resampling.bilinear,
+    )
+    return np.nan_to_num(heights, nan=SEA_LEVEL)[::-1]
+
+
+def _sample(raster, longitude, latitude):
+    """Bilinear values of band 1, read from the window that holds the points."""
+    import pyproj
+    from scipy.ndimage import map_coordinates
+
+    to_raster = pyproj.Transformer.from_crs("EPSG:4326", raster.crs, always_xy=True)
+    x, y = to_raster.transform(longitude, latitude)
+    row, column = rasterio.transform.rowcol(raster.transform, x, y, op=lambda position: position)
+    column, row = np.asarray(column) - 0.5, np.asarray(row) - 0.5
+    inside = (
+        np.isfinite(column) & (column > -1) & (column < raster.width)
+        & np.isfinite(row) & (row > -1) & (row < raster.height)
+    )  # fmt: skip
+    values = np.full(len(column), np.nan)
+    if inside.any():
+        band = raster.read(1, masked=True).astype(float).filled(SEA_LEVEL)
+        values[inside] = map_coordinates(
+            band, [row[inside], column[inside]], order=1, mode="nearest"
+        )
+    return values

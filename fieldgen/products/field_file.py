@@ -1,0 +1,170 @@
+"""The fields of a day as a CF NetCDF file."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import numpy as np
+import xarray as xr
+
+from fieldgen.ground.grid import Grid
+from fieldgen.products.atomic import whole_file
+from fieldgen.products.metadata import (
+    flag_attributes,
+    global_attributes,
+    time_coordinates,
+)
+from fieldgen.quantities import QUANTITIES
+from fieldgen.settings import NetworkTable
+
+PACKED = {"dtype": "int16", "scale_factor": 0.01, "_FillValue": np.int16(-32768)}
+"""Water vapour in steps of 0.01 kg m-2, a hundredth of what the best user asks for."""
+
+COMPRESSION = {"zlib": True, "complevel": 1, "shuffle": True}
+
+_SUMMARY = (
+    "Hourly precipitable water vapour on a grid. Zenith delays of ground-based GNSS stations are "
+    "converted to water vapour, reduced to a common reference height with an exponential scale "
+    "height, kriged, and brought back to the terrain."
+)
+
+
+def field_dataset(
+    *,
+    grid: Grid,
+    terrain_height,
+    time,
+    fields,
+    flag_bits,
+    network: NetworkTable,
+    reference_height,
+    processing,
+) -> xr.Dataset:
+    """Dataset of fields with all CF attributes; dimensions time, y, x.
+
+    terrain_height (ny, nx) [m]; time (t,) datetime64; fields: pwv, sigma, at_reference, flag
+    (t, ny, nx), scale_height, station_count (t,); processing: text that says how it was made
+    """
+    space = ("time", "y", "x")
+    dataset = xr.Dataset(
+        {
+            "pwv": (space, fields.pwv, _pwv_attributes()),
+            "pwv_sigma": (space, fields.sigma, QUANTITIES["pwv_sigma"].attributes()),
+            "pwv_at_reference": (
+                space, fields.at_reference, _reference_attributes(reference_height)
+            ),
+            "flag": (space, fields.flag.astype(np.int8), _flag_attributes(flag_bits)),
+            "terrain": (("y", "x"), terrain_height, _terrain_attributes()),
+            "scale_height": ("time", fields.scale_height, QUANTITIES["scale_height"].attributes()),
+            "station_count": (
+                "time", fields.station_count, QUANTITIES["station_count"].attributes()
+            ),
+            "crs": ((), np.int32(0), grid.crs.to_cf()),
+        },
+        coords=_coordinates(grid, time, network.time_step),
+        attrs=global_attributes(
+            title="precipitable water vapour",
+            summary=_SUMMARY,
+            network=network,
+            product_id=f"pwv_{np.datetime_as_string(time[0], unit='m')}",
+            time=time,
+            bounds=_geographic_bounds(grid),
+        ),
+    )  # fmt: skip
+    dataset.attrs["processing"] = processing
+    for name in ("pwv", "pwv_sigma", "pwv_at_reference", "flag", "terrain"):
+        dataset[name].attrs["grid_mapping"] = "crs"
+    _set_encoding(dataset)
+    return dataset
+
+
+def write_fields(dataset: xr.Dataset, path: Path) -> None:
+    """Write a dataset of `field_dataset`, packed and compressed, whole or not at all."""
+    with whole_file(path) as temporary:
+        dataset.to_netcdf(temporary, engine="netcdf4")
+
+
+def _pwv_attributes() -> dict:
+    return QUANTITIES["pwv"].attributes() | {
+        "ancillary_variables": "pwv_sigma flag",
+        "cell_methods": "time: mean area: mean",
+        "comment": "1 kg m-2 is 1 mm of liquid water.",
+    }
+
+
+def _reference_attributes(reference_height: float) -> dict:
+    quantity = QUANTITIES["pwv_at_reference"]
+    return quantity.attributes() | {
+        "cell_methods": "time: mean",
+        "reference_height": float(reference_height),
+        "comment": f"Above {reference_height:g} m everywhere, where moist and dry air masses show "
+        "without the mountains' imprint.",
+    }
+
+
+def _flag_attributes(bits: dict[str, int]) -> dict:
+    return {
+        "long_name": "quality of precipitable water vapour",
+        "standard_name": "quality_flag",
+        **flag_attributes(bits, np.int8),
+    }
+
+
+def _terrain_attributes() -> dict:
+    return QUANTITIES["terrain"].attributes() | {"cell_methods": "area: mean"}
+
+
+def _coordinates(grid: Grid, time, step) -> dict:
+    x, y = _axis_attributes(grid)
+    coordinates = {
+        **time_coordinates(time, step),
+        "y": ("y", grid.y, y),
+        "x": ("x", grid.x, x),
+        "y_bnds": (("y", "bounds"), _cell_bounds(grid.y, grid.spacing[1])),
+        "x_bnds": (("x", "bounds"), _cell_bounds(grid.x, grid.spacing[0])),
+    }
+    if grid.is_projected:
+        longitude, latitude = grid.longitude_latitude
+        for name, values in (("latitude", latitude), ("longitude", longitude)):
+            coordinates[name] = (("y", "x"), values, QUANTITIES[name].attributes())
+    return coordinates
+
+
+def _axis_attributes(grid: Grid) -> tuple[dict, dict]:
+    x = {"bounds": "x_bnds", "axis": "X"}
+    y = {"bounds": "y_bnds", "axis": "Y"}
+    if not grid.is_projected:
+        return x | QUANTITIES["longitude"].attributes(), y | QUANTITIES["latitude"].attributes()
+    unit = grid.crs.axis_info[0].unit_name
+    unit = "m" if unit in ("metre", "meter") else unit
+    for axis, letter in ((x, "x"), (y, "y")):
+        axis["standard_name"] = f"projection_{letter}_coordinate"
+        axis["long_name"] = f"{letter} coordinate of the cell's centre"
+        axis["units"] = unit
+    return x, y
+
+
+def _cell_bounds(centres, spacing: float):
+    """Contiguous bounds (n, 2)."""
+    edges = np.append(centres - spacing / 2, centres[-1] + spacing / 2)
+    return np.stack([edges[:-1], edges[1:]], axis=1)
+
+
+def _geographic_bounds(grid: Grid):
+    longitude, latitude = grid.longitude_latitude
+    return longitude.min(), latitude.min(), longitude.max(), latitude.max()
+
+
+def _set_encoding(dataset: xr.Dataset) -> None:
+    chunks = {"chunksizes": (1, dataset.sizes["y"], dataset.sizes["x"])}
+    for name in ("pwv", "pwv_sigma", "pwv_at_reference"):
+        dataset[name].encoding = {**PACKED, **COMPRESSION, **chunks}
+    dataset["flag"].encoding = {**COMPRESSION, **chunks}
+    dataset["terrain"].encoding = {"dtype": "float32", "_FillValue": None, **COMPRESSION}
+    dataset["scale_height"].encoding = {"dtype": "float32", "_FillValue": np.float32(-9999.0)}
+    dataset["station_count"].encoding = {"dtype": "int16", "_FillValue": None}
+    for name in ("x", "y", "x_bnds", "y_bnds"):
+        dataset[name].encoding = {"_FillValue": None}
+    for name in ("latitude", "longitude"):
+        if name in dataset.coords:
+            dataset[name].encoding = {"dtype": "float64", "_FillValue": None, **COMPRESSION}

@@ -1,0 +1,76 @@
+"""Which reader a file needs, seen from how it begins, not from its name."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import NamedTuple
+
+from fieldgen.errors import InputError
+from fieldgen.readers.records import DelayRecords, WeatherRecords
+from fieldgen.readers.rinex_met import is_rinex_met, read_rinex_met
+from fieldgen.readers.sinex_tro import is_sinex_tro, read_sinex_tro
+from fieldgen.readers.tables import (
+    DELAY_TABLE,
+    WEATHER_TABLE,
+    TableKind,
+    is_table,
+    read_delay_table,
+    read_weather_table,
+)
+from fieldgen.readers.text import first_content_line
+
+
+class Format(NamedTuple):
+    """A file format: what it is, whether a first line fits it, and its reader."""
+
+    description: str
+    fits: Callable[[str], bool]
+    read: Callable
+
+
+def _table_format(kind: TableKind, read: Callable) -> Format:
+    """A table with one header line."""
+    columns = ", ".join(kind.required + kind.one_of)
+    return Format(f"table with columns {columns}", lambda line: is_table(line, kind), read)
+
+
+DELAY_FORMATS = {
+    "SINEX_TRO": Format("2.00, 1.00 or 0.01, begins with %=TRO", is_sinex_tro, read_sinex_tro),
+    "CSV": _table_format(DELAY_TABLE, read_delay_table),
+}
+
+WEATHER_FORMATS = {
+    "RINEX": Format(
+        "meteorological, 2.11 or 3.0x, begins with RINEX VERSION / TYPE",
+        is_rinex_met,
+        read_rinex_met,
+    ),
+    "CSV": _table_format(WEATHER_TABLE, read_weather_table),
+}
+
+
+def read_delays(path, name: str | None = None) -> DelayRecords:
+    """Delays of a file in any of DELAY_FORMATS; InputError if it is in none of them."""
+    name = name or str(path)
+    return find_format(path, name, DELAY_FORMATS).read(path, name=name)
+
+
+def read_weather(path, name: str | None = None) -> WeatherRecords:
+    """Weather of a file in any of WEATHER_FORMATS; InputError if it is in none of them."""
+    name = name or str(path)
+    return find_format(path, name, WEATHER_FORMATS).read(path, name=name)
+
+
+def find_format(path, name: str, formats: dict[str, Format]) -> Format:
+    """The first format that fits how the file begins."""
+    line = first_content_line(path, name)
+    for known in formats.values():
+        if known.fits(line):
+            return known
+    begins = f"begins with {line.strip()[:40]!r}" if line else "is empty"
+    raise InputError(f"{name}: file {begins}, expected {describe_formats(formats)}.")
+
+
+def describe_formats(formats: dict[str, Format]) -> str:
+    """`SINEX_TRO (...) or CSV (...)`."""
+    return " or ".join(f"{name} ({known.description})" for name, known in formats.items())

@@ -1,0 +1,251 @@
+"""Where stations and barometers are, and how high above the geoid."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import numpy as np
+import xarray as xr
+
+from fieldgen.errors import GridError, InputError
+from fieldgen.ground.geoid import undulation
+from fieldgen.ground.grid import Grid
+from fieldgen.ground.terrain import read_raster_at
+from fieldgen.kriging.covariance import chord_positions, distances
+from fieldgen.readers.records import DelayRecords, ReadingReport, Site, WeatherRecords
+from fieldgen.readers.tables import StationRow
+from fieldgen.settings import Settings
+
+SAME_PLACE = 1.0
+"""Two positions of one station further apart than this [km] are reported."""
+
+SAME_HEIGHT = 5.0
+"""A listed orthometric height this far [m] from ellipsoidal - undulation is reported."""
+
+STATION_MARGIN = 2.0
+"""Stations further outside the grid than this many times `kriging.far_distance` are left out."""
+
+
+def locate_stations(
+    settings: Settings,
+    grid: Grid,
+    delays: list[DelayRecords],
+    table: dict[str, StationRow],
+    report: ReadingReport,
+) -> xr.Dataset:
+    """Stations that report delays and whose place is known, with all their heights.
+
+    Dataset (station): longitude, latitude [degrees], ellipsoidal_height, orthometric_height,
+    terrain_height [m], name. Raises InputError if no place or a height is not known, GridError if
+    no station is near the grid.
+    """
+    in_files = _sites(delays, "station_ids")
+    rows = {
+        station: row
+        for station, site in sorted(in_files.items())
+        if (row := _station_row(station, site, table, report)) is not None
+    }
+    if not rows:
+        raise InputError("stations: no station has coordinates. Give stations.table.")
+    column = _columns(rows)
+    by_table = np.array([station in table for station in rows])
+    ellipsoidal, orthometric = _heights(settings, list(rows), column, by_table, report)
+    stations = xr.Dataset(
+        {
+            "longitude": ("station", column["longitude"]),
+            "latitude": ("station", column["latitude"]),
+            "ellipsoidal_height": ("station", ellipsoidal),
+            "orthometric_height": ("station", orthometric),
+            "name": ("station", np.array([r.name or r.id for r in rows.values()], dtype=object)),
+        },
+        coords={"station": np.array(list(rows), dtype=object)},
+    )
+    near = _near_grid(settings, grid, stations, report)
+    return _with_terrain(settings, near, report)
+
+
+def _sites(tables: list[DelayRecords] | list[WeatherRecords], ids: str) -> dict[str, Site]:
+    """Every identifier of the files with the place that the last of them gives."""
+    sites: dict[str, Site] = {}
+    for records in tables:
+        for name in getattr(records, ids):
+            sites.setdefault(name, Site())
+        sites |= {name: site for name, site in records.sites.items() if name in sites}
+    return sites
+
+
+def _station_row(station: str, site: Site, table, report: ReadingReport) -> StationRow | None:
+    """Place of a station: from the table, else from the delay files."""
+    row = table.get(station) or _row_of_short_name(station, table)
+    if row is not None:
+        _compare_places(station, row, site, report)
+        return row
+    has_height = np.isfinite(site.ellipsoidal_height) or np.isfinite(site.msl_height)
+    if np.isfinite([site.longitude, site.latitude]).all() and has_height:
+        return StationRow(
+            id=station,
+            longitude=site.longitude,
+            latitude=site.latitude,
+            ellipsoidal_height=site.ellipsoidal_height,
+            orthometric_height=site.msl_height,
+            name=site.name,
+        )
+    report.left_out[station] = "no coordinates in stations.table or in the delay files"
+    return None
+
+
+def _row_of_short_name(station: str, table: dict[str, StationRow]) -> StationRow | None:
+    """Row whose identifier shares the first four characters, if there is just one."""
+    alike = [row for name, row in table.items() if name[:4] == station[:4]]
+    short = len(station) == 4 or any(len(row.id) == 4 for row in alike)
+    return alike[0] if len(alike) == 1 and short else None
+
+
+def _compare_places(station: str, row: StationRow, site: Site, report: ReadingReport) -> None:
+    apart = distances(
+        chord_positions([row.longitude], [row.latitude]),
+        chord_positions([site.longitude], [site.latitude]),
+    )[0, 0]
+    if apart > SAME_PLACE:
+        report.warnings.append(
+            f"station {station}: stations.table and the delay files place it {apart:.1f} km apart; "
+            "the table is used"
+        )
+
+
+def _columns(rows: dict[str, StationRow]) -> dict[str, np.ndarray]:
+    names = ("longitude", "latitude", "ellipsoidal_height", "undulation", "orthometric_height")
+    return {
+        name: np.array([getattr(row, name) for row in rows.values()], dtype=float) for name in names
+    }
+
+
+def _heights(settings: Settings, ids: list[str], column, trusted, report: ReadingReport):
+    """Ellipsoidal and orthometric heights (n,) [m], each made from the other where it is missing.
+
+    A listed orthometric height counts where `trusted` (n,) or where nothing else is known: in
+    delay files its geoid is often wrong, in sign or altogether. Both are compared.
+    """
+    geoid_height = _undulation(settings, column)
+    listed = column["orthometric_height"]
+    computed = column["ellipsoidal_height"] - geoid_height
+    for index in np.flatnonzero(np.abs(listed - computed) > SAME_HEIGHT):
+        report.warnings.append(
+            f"{ids[index]}: its listed height above sea level is {listed[index]:.1f} m, but "
+            f"ellipsoidal height less undulation is {computed[index]:.1f} m; the "
+            f"{'first' if trusted[index] else 'second'} is used"
+        )
+    orthometric = np.where(np.isfinite(listed) & (trusted | np.isnan(computed)), listed, computed)
+    if np.isnan(orthometric).any():
+        first = ids[int(np.argmax(np.isnan(orthometric)))]
+        raise InputError(
+            f"{first}: its orthometric height is unknown, as is that of "
+            f"{np.isnan(orthometric).sum() - 1} more. Set terrain.geoid, or give "
+            "orthometric_height or undulation in stations.table."
+        )
+    ellipsoidal = column["ellipsoidal_height"]
+    return np.where(np.isfinite(ellipsoidal), ellipsoidal, orthometric + geoid_height), orthometric
+
+
+def _undulation(settings: Settings, column):
+    """Undulation (n,) [m]: the table's own, else that of terrain.geoid, else NaN."""
+    geoid = settings.terrain.geoid
+    if geoid is None:
+        return column["undulation"]
+    geoid = settings.path(geoid) if isinstance(geoid, Path) else geoid
+    everywhere = undulation(geoid, column["longitude"], column["latitude"])
+    return np.where(np.isfinite(column["undulation"]), column["undulation"], everywhere)
+
+
+def _near_grid(settings: Settings, grid: Grid, stations: xr.Dataset, report: ReadingReport):
+    """Stations within reach of the grid; raises GridError if there is none."""
+    reach = STATION_MARGIN * settings.kriging.far_distance
+    away = _distance_to_grid(grid, stations.longitude.values, stations.latitude.values)
+    near = away <= reach
+    ids = stations.station.values
+    for station, distance in zip(ids[~near], away[~near], strict=True):
+        report.left_out[station] = f"lies {distance:.0f} km from the grid"
+    if not near.any():
+        raise GridError(
+            f"grid: all {len(ids)} stations lie more than {reach:.0f} km away from it, the nearest "
+            f"{away.min():.0f} km. Check grid.crs, the edges, and whether longitude and latitude "
+            "are swapped in stations.table."
+        )
+    return stations.isel(station=near)
+
+
+def _distance_to_grid(grid: Grid, longitude, latitude):
+    """Distance (n,) [km] of each place to the nearest of the grid's cells, zero inside it."""
+    cells = tuple(part.ravel() for part in grid.longitude_latitude)
+    x, y = (np.asarray(part) for part in grid.locate(longitude, latitude))
+    west, south, east, north = grid.bounds
+    inside = (x >= west) & (x <= east) & (y >= south) & (y <= north)
+    position, cell_position = chord_positions(longitude, latitude), chord_positions(*cells)
+    nearest = [np.linalg.norm(cell_position - place, axis=1).min() for place in position]
+    return np.where(inside, 0.0, nearest)
+
+
+def _with_terrain(settings: Settings, stations: xr.Dataset, report: ReadingReport) -> xr.Dataset:
+    """Stations with the terrain's height; a listed height far from it is reported."""
+    ground = read_raster_at(
+        settings.path(settings.terrain.file),
+        stations.longitude.values,
+        stations.latitude.values,
+        "terrain",
+    )
+    for name, listed, height in zip(
+        stations.station.values, stations.orthometric_height.values, ground, strict=True
+    ):
+        if abs(listed - height) > settings.screening.terrain_difference:
+            report.warnings.append(
+                f"station {name}: its listed orthometric height {listed:.0f} m and the terrain "
+                f"{height:.0f} m differ by more than screening.terrain_difference"
+            )
+    return stations.assign(terrain_height=("station", ground))
+
+
+def locate_sites(
+    settings: Settings,
+    weather: list[WeatherRecords],
+    stations: xr.Dataset,
+    report: ReadingReport,
+) -> xr.Dataset:
+    """Barometers whose place is known; one named like a station may take its coordinates.
+
+    Dataset (site): longitude, latitude [degrees], orthometric_height [m].
+    """
+    rows = {}
+    for name, site in sorted(_sites(weather, "site_ids").items()):
+        row = _site_row(name, site, stations)
+        if row is None:
+            report.left_out[name] = "no position in its weather files, and no station of its name"
+        else:
+            rows[name] = row
+    column = _columns(rows)
+    _, orthometric = _heights(settings, list(rows), column, np.ones(len(rows), bool), report)
+    return xr.Dataset(
+        {
+            "longitude": ("site", column["longitude"]),
+            "latitude": ("site", column["latitude"]),
+            "orthometric_height": ("site", orthometric),
+        },
+        coords={"site": np.array(list(rows), dtype=object)},
+    )
+
+
+def _site_row(name: str, site: Site, stations: xr.Dataset) -> StationRow | None:
+    """Place of a barometer; what its file does not say is that of the station of the same name."""
+    ids = stations.station.values
+    same = [index for index, station in enumerate(ids) if name in (station, station[:4])]
+    station = stations.isel(station=same[0]) if same else None
+    placed = np.isfinite([site.longitude, site.latitude]).all()
+    has_height = np.isfinite(site.ellipsoidal_height) or np.isfinite(site.msl_height)
+    if station is None and not (placed and has_height):
+        return None
+    return StationRow(
+        id=name,
+        longitude=site.longitude if placed else float(station.longitude),
+        latitude=site.latitude if placed else float(station.latitude),
+        ellipsoidal_height=site.ellipsoidal_height,
+        orthometric_height=site.msl_height if has_height else float(station.orthometric_height),
+    )

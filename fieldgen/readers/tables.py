@@ -1,0 +1,341 @@
+"""Tables (CSV) of delays, weather and stations: one header line, one record a line."""
+
+from __future__ import annotations
+
+import csv
+from collections.abc import Iterator
+from dataclasses import dataclass, field
+from typing import NamedTuple
+
+import numpy as np
+
+from fieldgen.errors import InputError
+from fieldgen.readers.assembly import (
+    DELAY_VALUES,
+    WEATHER_VALUES,
+    Columns,
+    Rows,
+    check_anything_usable,
+    delay_records,
+    weather_records,
+)
+from fieldgen.readers.epochs import iso_epoch
+from fieldgen.readers.positions import check_position, distance_km
+from fieldgen.readers.records import DelayRecords, LineError, Rejections, Site, WeatherRecords
+from fieldgen.readers.text import first_content_line, read_lines
+
+DELIMITERS = ",;\t"
+MISSING_WORDS = ("", "nan", "na", "null", "none", "-")
+LONGEST_IDENTIFIER = 40
+SAME_PLACE_KM = 1.0
+
+
+class TableKind(NamedTuple):
+    """Columns of one kind of table, in lower case.
+
+    one_of : at least one of these is needed, if there are any
+    """
+
+    required: tuple[str, ...]
+    one_of: tuple[str, ...]
+    optional: tuple[str, ...]
+
+    @property
+    def known(self) -> tuple[str, ...]:
+        """All columns."""
+        return tuple(dict.fromkeys(self.required + self.one_of + self.optional))
+
+
+PLACE = ("longitude", "latitude", "ellipsoidal_height", "orthometric_height")
+"""[degrees east, degrees north, m, m]"""
+
+DELAY_TABLE = TableKind(("station", "time"), ("ztd", "pwv"), ("ztd_sigma", "pwv_sigma", *PLACE))
+"""ztd, ztd_sigma [m], pwv, pwv_sigma [kg m-2]"""
+
+WEATHER_TABLE = TableKind(
+    ("site", "time"), ("pressure", "temperature"), ("relative_humidity", *PLACE)
+)
+"""pressure [hPa], temperature [K], relative_humidity [%]"""
+
+STATION_TABLE = TableKind(
+    ("id", "longitude", "latitude", "ellipsoidal_height"),
+    (),
+    ("undulation", "orthometric_height", "name"),
+)
+"""longitude, latitude [degrees], heights and undulation [m]"""
+
+
+@dataclass(frozen=True)
+class StationRow:
+    """A station as the station table gives it; NaN where a column is blank or absent.
+
+    longitude, latitude [degrees], longitude in -180 to 180; heights and undulation [m], undulation
+    = ellipsoidal_height - orthometric_height.
+    """
+
+    id: str
+    longitude: float
+    latitude: float
+    ellipsoidal_height: float = np.nan
+    undulation: float = np.nan
+    orthometric_height: float = np.nan
+    name: str = ""
+
+
+def read_delay_table(path, *, name: str | None = None) -> DelayRecords:
+    """Delays of a table with the columns of DELAY_TABLE, plain or gzip.
+
+    Times are ISO 8601 in UTC. `name` stands for the file in messages. Raises InputError for unknown
+    or missing columns, and if no line can be used.
+    """
+    name = name or str(path)
+    table = _Table(name, *read_header(path, name, DELAY_TABLE))
+    columns, places = _read_records(path, table, "station", DELAY_VALUES)
+    return delay_records(name, list(places.ids), columns, table.rejections, **places.about())
+
+
+def read_weather_table(path, *, name: str | None = None) -> WeatherRecords:
+    """Weather of a table with the columns of WEATHER_TABLE, plain or gzip; else as the delays."""
+    name = name or str(path)
+    table = _Table(name, *read_header(path, name, WEATHER_TABLE))
+    columns, places = _read_records(path, table, "site", WEATHER_VALUES)
+    return weather_records(name, list(places.ids), columns, table.rejections, **places.about())
+
+
+def read_station_table(
+    path, *, name: str | None = None
+) -> tuple[dict[str, StationRow], Rejections]:
+    """Stations by identifier, and rejected lines, of a table with the columns of STATION_TABLE.
+
+    A later line for the same station wins. A station that would lie with the others if its
+    longitude and latitude were exchanged is rejected. Raises InputError as the other tables do.
+    """
+    name = name or str(path)
+    table = _Table(name, *read_header(path, name, STATION_TABLE))
+    stations, lines = _read_stations(path, table)
+    for station in exchanged_positions(list(stations.values())):
+        del stations[station.id]
+        detail = (
+            f"station {station.id}: longitude is {station.longitude:g},"
+            f" latitude {station.latitude:g}"
+        )
+        table.reject(lines[station.id], LineError("longitude and latitude exchanged", detail))
+    check_anything_usable(name, len(stations), table.rejections)
+    return stations, table.rejections
+
+
+def _read_stations(path, table: _Table) -> tuple[dict[str, StationRow], dict[str, int]]:
+    """Stations by identifier, and the line that each comes from."""
+    lines: dict[str, int] = {}
+    stations: dict[str, StationRow] = {}
+    for number, row in table.rows(path):
+        try:
+            station = parse_station(row)
+        except LineError as error:
+            table.reject(number, error)
+            continue
+        if station.id in stations:
+            detail = f"station {station.id}: a later line is used"
+            table.reject(lines[station.id], LineError("duplicate station", detail))
+        stations[station.id], lines[station.id] = station, number
+    return stations, lines
+
+
+def is_table(line: str, kind: TableKind) -> bool:
+    """Whether a file that begins with `line` is meant as this kind of table."""
+    return any(column in kind.known for column in split_header(line)[1])
+
+
+def split_header(line: str) -> tuple[str, list[str]]:
+    """The delimiter and the column names, in lower case, of a header line."""
+    delimiter = max(DELIMITERS, key=line.count)
+    return delimiter, [word.strip().strip('"').lower() for word in line.split(delimiter)]
+
+
+def read_header(path, name: str, kind: TableKind) -> tuple[str, list[str]]:
+    """Delimiter and columns of a file, checked; InputError tells the columns that are known."""
+    line = first_content_line(path, name)
+    if not line:
+        raise InputError(f"{name}: nothing in the file, expected columns {', '.join(kind.known)}.")
+    delimiter, columns = split_header(line)
+    known = f"Known columns: {', '.join(kind.known)}."
+    unknown = [column for column in columns if column not in kind.known]
+    if unknown:
+        raise InputError(f"{name}: column {unknown[0][:40]!r} is unknown. {known}")
+    if len(set(columns)) < len(columns):
+        raise InputError(f"{name}: a column occurs twice, expected each once. {known}")
+    missing = [column for column in kind.required if column not in columns]
+    if missing:
+        raise InputError(f"{name}: column {missing[0]} is missing. {known}")
+    if kind.one_of and not set(kind.one_of) & set(columns):
+        raise InputError(f"{name}: columns {' and '.join(kind.one_of)} are missing. {known}")
+    return delimiter, columns
+
+
+@dataclass
+class _Table:
+    """A file whose header has been read."""
+
+    file: str
+    delimiter: str
+    columns: list[str]
+    rejections: Rejections = field(default_factory=Rejections)
+
+    def rows(self, path) -> Iterator[tuple[int, dict[str, str]]]:
+        """Line number and cells by column of each line after the header; others are rejected."""
+        lines = (
+            (number, line)
+            for number, line in read_lines(path, self.file, self.rejections)
+            if line.strip() and not line.lstrip().startswith("#")
+        )
+        next(lines, None)
+        for number, line in lines:
+            try:
+                cells = split_cells(line, self.delimiter, len(self.columns))
+            except LineError as error:
+                self.reject(number, error)
+            else:
+                yield number, dict(zip(self.columns, cells, strict=True))
+
+    def reject(self, line: int, error: LineError) -> None:
+        """Count a line that cannot be used."""
+        self.rejections.add(self.file, line, error.reason, error.detail)
+
+
+def split_cells(line: str, delimiter: str, count: int) -> list[str]:
+    """The cells of a line, which must be `count`; quotes may enclose a delimiter."""
+    if '"' in line:
+        try:
+            cells = next(csv.reader([line], delimiter=delimiter, strict=True))
+        except csv.Error:
+            raise LineError("quotes do not match", f"line begins {line[:40]!r}") from None
+    else:
+        cells = line.split(delimiter)
+    if len(cells) != count:
+        raise LineError("wrong number of columns", f"{len(cells)}, expected {count}")
+    return [cell.strip() for cell in cells]
+
+
+def parse_number(row: dict[str, str], column: str) -> float:
+    """A cell as a number, NaN if it is missing or there is no such column; LineError for others."""
+    text = row.get(column, "")
+    try:
+        return float(text)
+    except ValueError:
+        if text.lower() in MISSING_WORDS:
+            return np.nan
+        raise LineError("not a number", f"{column} is {text[:20]!r}") from None
+
+
+def parse_identifier(text: str) -> str:
+    """An identifier in upper case; LineError if it is blank or absurdly long."""
+    if not 1 <= len(text) <= LONGEST_IDENTIFIER:
+        raise LineError("no identifier", f"it is {text[:40]!r}")
+    return text.upper()
+
+
+def parse_time(text: str) -> int:
+    """Seconds of an ISO 8601 time in UTC; LineError for anything else."""
+    try:
+        return iso_epoch(text)
+    except ValueError as error:
+        raise LineError("impossible time", str(error)) from None
+
+
+def parse_place(identifier: str, row: dict[str, str]) -> tuple[float, ...]:
+    """The values of PLACE, NaN where not given; LineError if there is no such place on Earth."""
+    longitude, latitude, *heights = (parse_number(row, column) for column in PLACE)
+    if not np.isnan([longitude, latitude]).all():
+        try:
+            longitude, latitude = check_position(longitude, latitude)
+        except ValueError as error:
+            raise LineError("impossible position", f"{identifier}: {error}") from None
+    return longitude, latitude, *heights
+
+
+def parse_station(row: dict[str, str]) -> StationRow:
+    """A row of the station table; LineError if it says not who and where the station is."""
+    identifier = parse_identifier(row["id"])
+    longitude, latitude, ellipsoidal, orthometric = parse_place(identifier, row)
+    if np.isnan(longitude):
+        raise LineError("no position", identifier)
+    if np.isnan([ellipsoidal, orthometric]).all():
+        raise LineError("no height", identifier)
+    undulation = parse_number(row, "undulation")
+    name = row.get("name", "")
+    return StationRow(identifier, longitude, latitude, ellipsoidal, undulation, orthometric, name)
+
+
+EXCHANGED_KM, NETWORK_KM = 300.0, 1000.0
+"""A position counts as exchanged if it lies further than NETWORK_KM from the middle of the network
+and, exchanged, within EXCHANGED_KM."""
+
+
+def exchanged_positions(stations: list[StationRow]) -> list[StationRow]:
+    """Stations whose longitude and latitude stand in each other's place, judged by the others."""
+    if len(stations) < 3:
+        return []
+    middle = (
+        np.median([station.longitude for station in stations]),
+        np.median([station.latitude for station in stations]),
+    )
+    return [
+        station
+        for station in stations
+        if distance_km(station.longitude, station.latitude, *middle) > NETWORK_KM
+        and distance_km(station.latitude, station.longitude, *middle) < EXCHANGED_KM
+    ]
+
+
+@dataclass
+class _Places:
+    """Stations or sites of a file, each with the first place that the file gives it."""
+
+    ids: dict[str, int] = field(default_factory=dict)
+    sites: dict[str, Site] = field(default_factory=dict)
+    last_cells: dict[str, tuple] = field(default_factory=dict)
+    moved: dict[str, float] = field(default_factory=dict)
+
+    def number(self, identifier: str, row: dict[str, str]) -> int:
+        """Index of an identifier; its place is parsed where it differs from the line before."""
+        cells = tuple(row.get(column, "") for column in PLACE)
+        if self.last_cells.get(identifier) != cells:
+            site = Site(*parse_place(identifier, row))
+            self.last_cells[identifier] = cells
+            self._compare(identifier, self.sites.setdefault(identifier, site), site)
+        return self.ids.setdefault(identifier, len(self.ids))
+
+    def _compare(self, identifier: str, first: Site, now: Site) -> None:
+        """Remember the largest distance [km] from the first place."""
+        apart = distance_km(first.longitude, first.latitude, now.longitude, now.latitude)
+        if apart > max(SAME_PLACE_KM, self.moved.get(identifier, 0.0)):
+            self.moved[identifier] = apart
+
+    def about(self) -> dict:
+        """The sites of which the file says something, and a warning for each that moves."""
+        sites = {
+            key: site
+            for key, site in self.sites.items()
+            if not np.isnan([site.longitude, site.ellipsoidal_height, site.msl_height]).all()
+        }
+        warnings = [
+            f"{key}: positions are {apart:.0f} km apart, expected one place. The first is used."
+            for key, apart in self.moved.items()
+        ]
+        return {"sites": sites, "warnings": warnings}
+
+
+def _read_records(
+    path, table: _Table, id_column: str, value_names: tuple[str, ...]
+) -> tuple[Columns, _Places]:
+    """Records, and the places they refer to."""
+    places, rows = _Places(), Rows(value_names)
+    for number, row in table.rows(path):
+        try:
+            identifier = parse_identifier(row[id_column])
+            time = parse_time(row["time"])
+            values = [parse_number(row, name) for name in value_names]
+            rows.add(number, places.number(identifier, row), time, *values)
+        except LineError as error:
+            table.reject(number, error)
+    return rows.columns(), places

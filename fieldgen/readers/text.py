@@ -1,0 +1,131 @@
+"""Text files, plain or gzip, as blocks of whole lines or as lines; memory stays bounded.
+
+Gzip is known by its first bytes, whatever the file is called. Text is UTF-8, or Latin-1 where it is
+not valid UTF-8. Lines end in LF or CRLF.
+"""
+
+from __future__ import annotations
+
+import gzip
+import zlib
+from collections.abc import Iterator
+from contextlib import contextmanager
+from pathlib import Path
+from typing import IO, NamedTuple
+
+from fieldgen.errors import InputError
+from fieldgen.readers.records import Rejections
+
+LONGEST_LINE = 10_000
+"""Longest line [bytes] that is read; no format here comes near it."""
+
+CHUNK_BYTES = 1 << 22
+"""Size of a block [bytes]: about 50 000 lines."""
+
+GZIP_MAGIC = b"\x1f\x8b"
+UTF8_MARK = b"\xef\xbb\xbf"
+OTHER_COMPRESSION = {
+    b"\x1f\x9d": "compress (.Z)",
+    b"BZh": "bzip2",
+    b"PK\x03\x04": "zip",
+    b"\xfd7zXZ": "xz",
+}
+
+
+class Chunk(NamedTuple):
+    """Some whole lines, each ending in LF (the last line of a file may lack it).
+
+    Of a line longer than a chunk the middle is left out, but it stays longer than LONGEST_LINE.
+    """
+
+    data: bytes
+    first_line: int
+
+
+@contextmanager
+def open_bytes(path, name: str) -> Iterator[IO[bytes]]:
+    """An open binary file, decompressed on the way if it is gzip.
+
+    Raises InputError, which begins with `name`, where the file cannot be opened or read to its end.
+    """
+    try:
+        with open(path, "rb") as raw:
+            start = raw.read(6)
+            raw.seek(0)
+            _check_compression(start, name)
+            if start.startswith(GZIP_MAGIC):
+                with gzip.open(raw) as unpacked:
+                    yield unpacked
+            else:
+                yield raw
+    except EOFError as error:
+        raise InputError(
+            f"{name}: gzip data end early, expected a complete file. Fetch the file again."
+        ) from error
+    except (gzip.BadGzipFile, zlib.error) as error:
+        raise InputError(
+            f"{name}: gzip data are damaged ({error}). Fetch the file again."
+        ) from error
+    except OSError as error:
+        raise InputError(f"{name}: cannot be read ({error.strerror or error}).") from error
+
+
+def _check_compression(start: bytes, name: str) -> None:
+    """Refuse what is compressed in a way that is not read here."""
+    for magic, kind in OTHER_COMPRESSION.items():
+        if start.startswith(magic):
+            raise InputError(
+                f"{name}: compression is {kind}, expected plain text or gzip. Unpack it first."
+            )
+
+
+def read_chunks(path, name: str, size: int = CHUNK_BYTES) -> Iterator[Chunk]:
+    """The file as chunks of about `size` bytes, cut between lines."""
+    line = 1
+    with open_bytes(path, name) as stream:
+        rest = stream.read(len(UTF8_MARK)).removeprefix(UTF8_MARK)
+        while block := stream.read(size):
+            whole, newline, rest = (rest + block).rpartition(b"\n")
+            rest = rest[: LONGEST_LINE + 1]
+            if newline:
+                yield Chunk(whole + newline, line)
+                line += whole.count(b"\n") + 1
+        if rest:
+            yield Chunk(rest, line)
+
+
+def decode(data: bytes) -> str:
+    """Text of `data`: UTF-8 if it is valid, else Latin-1, which takes any byte."""
+    try:
+        return data.decode("utf-8")
+    except UnicodeDecodeError:
+        return data.decode("latin-1")
+
+
+def read_lines(path, name: str, rejections: Rejections) -> Iterator[tuple[int, str]]:
+    """Line number (from 1) and text without its line ending; lines too long are rejected."""
+    for chunk in read_chunks(path, name):
+        lines = chunk.data.removesuffix(b"\n").split(b"\n")
+        for number, line in enumerate(lines, chunk.first_line):
+            if len(line) > LONGEST_LINE:
+                reject_long_line(rejections, name, number)
+            else:
+                yield number, decode(line).rstrip("\r")
+
+
+def reject_long_line(rejections: Rejections, name: str, line: int) -> None:
+    """Count a line that is too long to belong to any format read here."""
+    rejections.add(name, line, "line too long", f"more than {LONGEST_LINE} bytes")
+
+
+def first_content_line(path, name: str) -> str:
+    """The first line that is neither empty nor a `#` comment, '' if there is none."""
+    for _, line in read_lines(path, name, Rejections()):
+        if line.strip() and not line.lstrip().startswith("#"):
+            return line
+    return ""
+
+
+def file_stem(path) -> str:
+    """Name of a file without folder, `.gz` and its last suffix."""
+    return Path(Path(path).name.removesuffix(".gz")).stem

@@ -1,0 +1,157 @@
+"""What the files say -> water vapour at every station and hour, with the tests of its series."""
+
+from __future__ import annotations
+
+import numpy as np
+import xarray as xr
+
+from fieldgen.constants import REFRACTIVITY
+from fieldgen.quantities import QUANTITIES
+from fieldgen.readers.network import Network
+from fieldgen.settings import RetrievalTable, Settings
+from fieldgen.station.delay import (
+    conversion_factor,
+    hydrostatic_delay,
+    mean_temperature,
+    water_vapour_sigma,
+)
+from fieldgen.station.screening import STATION_FLAGS, formal_error_too_large, jumps
+from fieldgen.station.surface_air import (
+    Sites,
+    SurfaceAir,
+    Weather,
+    own_barometer,
+    screen_barometers,
+    surface_air,
+)
+
+CONSTANT_FACTOR_SIGMA = 0.025
+"""Relative standard error of a constant conversion factor: Pi runs from 0.146 to 0.165 between
+Tm of 255 and 290 K."""
+
+SUSPICIOUS_CLIMB = 50.0
+"""An antenna this much [m] above or below its own barometer is reported."""
+
+
+def retrieve_water_vapour(network: Network) -> xr.Dataset:
+    """Water vapour of every station and hour, Dataset (time, station).
+
+    ztd, ztd_sigma, zhd, zwd [m], pressure [hPa], pressure_source, mean_temperature [K], pwv,
+    pwv_sigma [kg m-2] and flag, zero where the value passes every test on its own series; with
+    the stations' places. Odd barometers and heights are added to ``network.report``.
+    """
+    settings, stations, delays = network.settings, network.stations, network.delays
+    air = _air_at_antennas(network)
+    sigma = _realistic_ztd_sigma(delays.ztd_sigma.values, settings.retrieval)
+    zhd = hydrostatic_delay(
+        air.pressure, stations.latitude.values, stations.orthometric_height.values
+    )
+    tm, factor, relative_sigma = _conversion(settings.retrieval, air)
+    zwd = delays.ztd.values - zhd
+    pwv = factor * zwd
+    pwv_sigma = water_vapour_sigma(factor, pwv, sigma, air.pressure_sigma, relative_sigma)
+    given = np.isnan(delays.ztd.values) & np.isfinite(delays.pwv.values)
+    pwv = np.where(given, delays.pwv.values, pwv)
+    given_sigma = np.fmax(delays.pwv_sigma.values, factor * settings.retrieval.ztd_sigma_floor)
+    pwv_sigma = np.where(given, given_sigma, pwv_sigma)
+    variables = {
+        "ztd": delays.ztd.values, "ztd_sigma": sigma, "zhd": zhd, "zwd": zwd,
+        "pressure": air.pressure, "pressure_source": air.source, "mean_temperature": tm,
+        "pwv": pwv, "pwv_sigma": pwv_sigma,
+        "flag": _series_flags(settings, delays, given, air, pwv),
+    }  # fmt: skip
+    return stations.assign(
+        {name: (("time", "station"), values) for name, values in variables.items()}
+    ).assign_coords(time=delays.time)
+
+
+def _air_at_antennas(network: Network) -> SurfaceAir:
+    settings, weather = network.settings, network.weather
+    barometers = Sites(
+        weather.longitude.values, weather.latitude.values, weather.orthometric_height.values
+    )
+    antennas = Sites(
+        network.stations.longitude.values,
+        network.stations.latitude.values,
+        network.stations.orthometric_height.values,
+    )
+    own = own_barometer(antennas, barometers, settings.retrieval.barometer_distance)
+    _report_climbs(network, barometers, antennas, own)
+    measured = Weather(
+        weather.pressure.values, weather.temperature.values, weather.relative_humidity.values
+    )
+    return surface_air(
+        _screened(measured, barometers, network),
+        barometers,
+        antennas,
+        own,
+        barometer_sigma=settings.retrieval.barometer_sigma,
+        sources=settings.retrieval.pressure,
+    )
+
+
+def _screened(measured: Weather, barometers: Sites, network: Network) -> Weather:
+    """Weather without the pressures that the other barometers contradict."""
+    if not len(barometers.height):
+        return measured
+    settings, report = network.settings, network.report
+    limit = settings.screening.pressure_difference
+    rejected, residuals = screen_barometers(
+        measured, barometers, settings.retrieval.barometer_sigma, limit
+    )
+    for index in np.flatnonzero(rejected.any(axis=0)):
+        site = network.weather.site.values[index]
+        count = int(rejected[:, index].sum())
+        report.rejections.counts[f"barometer {site}", "pressure contradicts the others"] += count
+        if count > 0.5 * np.isfinite(measured.pressure[:, index]).sum():
+            difference = np.nanmedian(residuals[rejected[:, index], index])
+            report.warnings.append(
+                f"barometer {site}: reads {difference:+.1f} hPa against the others, as if its "
+                f"listed height were wrong by {abs(difference) / 0.12:.0f} m; it is not used"
+            )
+    return measured._replace(pressure=np.where(rejected, np.nan, measured.pressure))
+
+
+def _report_climbs(network: Network, barometers: Sites, antennas: Sites, own) -> None:
+    for index in np.flatnonzero(own >= 0):
+        climb = antennas.height[index] - barometers.height[own[index]]
+        if abs(climb) > SUSPICIOUS_CLIMB:
+            network.report.warnings.append(
+                f"station {network.stations.station.values[index]}: its antenna is listed "
+                f"{climb:+.0f} m from its own barometer "
+                f"{network.weather.site.values[own[index]]}; one of the two heights is wrong"
+            )
+
+
+def _realistic_ztd_sigma(formal, settings: RetrievalTable):
+    """Formal errors, which are optimistic, scaled and floored [m]; without one, the floor."""
+    return np.fmax(settings.ztd_sigma_scale * formal, settings.ztd_sigma_floor)
+
+
+def _conversion(settings: RetrievalTable, air: SurfaceAir):
+    """Tm [K], conversion factor [kg m-2 per m] and its relative standard error, each (t, n)."""
+    model = settings.mean_temperature_model
+    tm = mean_temperature(air.temperature, model)
+    if settings.conversion_factor is not None:
+        factor = np.full(tm.shape, settings.conversion_factor)
+        return np.full(tm.shape, np.nan), factor, np.full(tm.shape, CONSTANT_FACTOR_SIGMA)
+    sigma = np.hypot(model.rms, model.slope * air.temperature_sigma)
+    return tm, conversion_factor(tm, REFRACTIVITY[settings.refractivity]), sigma / tm
+
+
+def _series_flags(settings: Settings, delays: xr.Dataset, given, air: SurfaceAir, pwv):
+    """Flags (t, n) of the tests that need nothing but the station's own series."""
+    limits, plausible = settings.screening, QUANTITIES["pwv"]
+    no_delay = np.isnan(delays.ztd.values) & ~given
+    formal = formal_error_too_large(
+        delays.ztd_sigma.values, limits.formal_error, limits.formal_error_ratio
+    )
+    no_pressure = ~no_delay & ~given & np.isnan(air.pressure)
+    with np.errstate(invalid="ignore"):
+        range_ = (pwv < plausible.low) | (pwv > plausible.high)
+    jump = jumps(np.where(formal | range_, np.nan, pwv), limits.jump)
+    tests = {
+        "no_delay": no_delay, "formal_error": formal, "no_pressure": no_pressure,
+        "out_of_range": range_, "jump": jump,
+    }  # fmt: skip
+    return sum(STATION_FLAGS[name] * found for name, found in tests.items()).astype(np.int16)

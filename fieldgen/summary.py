@@ -1,0 +1,148 @@
+"""Summaries on the terminal as text: what was used, what was rejected and why."""
+
+from __future__ import annotations
+
+import io
+
+import numpy as np
+import xarray as xr
+from rich.console import Console
+from rich.table import Table
+from rich.text import Text
+
+from fieldgen.readers.network import Network, ReadingReport
+from fieldgen.report import DayReport, RunReport
+from fieldgen.station.screening import STATION_FLAGS
+
+WARNINGS_SHOWN = 8
+"""Further warnings are counted; all of them stand in run.json."""
+
+_WIDTH = 100
+
+
+def format_run(run: RunReport) -> str:
+    """Summary of a finished run."""
+    totals = run.totals()
+    parts = [
+        _format_reading(run.reading),
+        _render(_station_table(run)),
+        _render(_day_table(run.days)),
+        _format_totals(totals),
+        f"{totals['files_written']} files written to {run.folder}",
+    ]
+    return "\n".join(part for part in parts if part)
+
+
+def format_check(network: Network, stations: xr.Dataset) -> str:
+    """What a run would use, for `fieldgen check`."""
+    grid, report = network.grid, network.report
+    time = stations.time.values
+    ny, nx = grid.shape
+    heights = stations.orthometric_height.values
+    ground = network.terrain.mean
+    usable = (stations.flag.values == 0).mean()
+    lines = [
+        f"network   {network.settings.network.name}",
+        f"grid      {nx} x {ny} cells of {grid.spacing[0]:g} in {grid.crs.name}",
+        f"terrain   {ground.min():.0f} to {ground.max():.0f} m in the mean of a cell, "
+        f"{network.terrain.is_sea.mean():.0%} sea",
+        f"stations  {len(heights)}, {heights.min():.0f} to {heights.max():.0f} m orthometric",
+        f"weather   {network.weather.sizes['site']} barometers",
+        f"steps     {len(time)}, stamped {_minute(time[0])} to {_minute(time[-1])} UTC",
+        f"usable    {usable:.1%} of the stations' values before they are compared with each other",
+    ]
+    return "\n".join([*lines, _format_reading(report)]).rstrip()
+
+
+def _minute(time) -> str:
+    return np.datetime_as_string(time, unit="m").replace("T", " ")
+
+
+def _format_reading(report: ReadingReport) -> str:
+    lines = [f"read      {len(report.files)} files, {sum(report.files.values())} records"]
+    lines += [f"unusable  {reason}" for reason in report.unusable_files.values()]
+    lines += [
+        f"rejected  {where}: {count} x {reason}"
+        for (where, reason), count in report.rejections.counts.items()
+    ]
+    lines += [f"left out  {name}: {reason}" for name, reason in report.left_out.items()]
+    lines += [f"warning   {warning}" for warning in report.warnings[:WARNINGS_SHOWN]]
+    more = len(report.warnings) - WARNINGS_SHOWN
+    if more > 0:
+        lines.append(f"warning   and {more} more; all of them stand in run.json")
+    return "\n".join(lines)
+
+
+def _station_table(run: RunReport) -> Table | None:
+    """Stations that lost values, with the reasons; None where every value was used."""
+    table = _table("station", "steps used", *(name.replace("_", " ") for name in STATION_FLAGS))
+    for station, counts in sorted(run.station_totals().items()):
+        if any(counts[name] for name in STATION_FLAGS):
+            reasons = (str(counts[name] or "") for name in STATION_FLAGS)
+            table.add_row(Text(station), str(counts["used"]), *reasons)
+    return table if table.row_count else None
+
+
+def _day_table(days: list[DayReport]) -> Table:
+    table = _table(
+        "day",
+        "steps",
+        "scale height [m]",
+        "partial sill",
+        "range [km]",
+        "nugget",
+        "LOO RMSE",
+        "note",
+    )
+    for day in days:
+        covariance = day.covariance or {}
+        table.add_row(
+            day.name,
+            f"{day.steps_made}/{day.steps}",
+            _span(day.scale_height),
+            *(_number(covariance.get(key)) for key in ("partial_sill", "range", "nugget")),
+            _number(_rmse(day)),
+            covariance.get("note", "too few stations"),
+        )
+    return table
+
+
+def _table(*columns: str) -> Table:
+    table = Table(box=None, pad_edge=False, header_style="")
+    for index, column in enumerate(columns):
+        last = column == "note"
+        table.add_column(column, justify="left" if index == 0 or last else "right")
+    return table
+
+
+def _span(scale_height: dict | None) -> str:
+    if scale_height is None:
+        return "-"
+    return f"{scale_height['mean']} ({scale_height['lowest']}-{scale_height['highest']})"
+
+
+def _rmse(day: DayReport) -> float | None:
+    count = day.leave_one_out["count"]
+    return float(np.sqrt(day.leave_one_out["sum_of_squares"] / count)) if count else None
+
+
+def _number(value: float | None) -> str:
+    return "-" if value is None else f"{value:.3g}"
+
+
+def _format_totals(totals: dict) -> str:
+    if totals["leave_one_out_rmse"] is None:
+        return f"{totals['steps_made']} of {totals['steps']} steps made"
+    return (
+        f"{totals['steps_made']} of {totals['steps']} steps made; leaving each station out: "
+        f"RMSE {totals['leave_one_out_rmse']:.2f} kg m-2, SD of standardised errors "
+        f"{totals['leave_one_out_standardised_sd']:.2f}"
+    )
+
+
+def _render(table: Table | None) -> str:
+    if table is None:
+        return ""
+    buffer = io.StringIO()
+    Console(file=buffer, width=_WIDTH, highlight=False).print(table)
+    return "\n" + buffer.getvalue().rstrip()

@@ -1,0 +1,106 @@
+"""A generated network of any size, written as input files, for the benchmarks."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import numpy as np
+import rasterio
+from rasterio.transform import from_bounds
+from scipy.ndimage import gaussian_filter
+
+SETTINGS = """
+[network]
+name = "Benchmark"
+[grid]
+crs = "EPSG:32626"
+west = 300000
+south = 5100000
+east = {east}
+north = {north}
+spacing = 1000
+[stations]
+delays = ["delays.csv"]
+[terrain]
+file = "terrain.tif"
+geoid = 57.0
+[products]
+maps = "none"
+"""
+
+START = np.datetime64("2026-03-01T00:30:00", "s")
+
+
+def write_network(
+    folder: Path, *, hours: int, stations: int, cells: int, gap_share: float, seed: int = 1
+) -> Path:
+    """Files of a network with hourly water vapour; returns the path of its network.toml.
+
+    cells : along each side, of 1 km. Gaps are outages of about six hours that make up `gap_share`.
+    """
+    draw = np.random.default_rng(seed)
+    side = cells * 1000
+    settings = SETTINGS.format(east=300000 + side, north=5100000 + side)
+    (folder / "network.toml").write_text(settings)
+    terrain = _write_terrain(folder, cells, draw)
+    x, y = draw.uniform(0.02, 0.98, (2, stations)) * side
+    height = terrain[cells - 1 - (y / 1000).astype(int), (x / 1000).astype(int)]
+    values = _water_vapour(x, y, height, hours, draw)
+    values[_outages(hours, stations, gap_share, draw)] = np.nan
+    _write_delays(folder, x, y, height, values)
+    return folder / "network.toml"
+
+
+def _write_terrain(folder: Path, cells: int, draw):
+    """Hills up to about 1500 m, heights (cells, cells), north row first."""
+    relief = gaussian_filter(draw.normal(size=(cells, cells)), cells / 25)
+    terrain = np.clip(relief / np.abs(relief).max() * 1500.0 + 200.0, 0.0, None).astype(np.float32)
+    bounds = (300000, 5100000, 300000 + cells * 1000, 5100000 + cells * 1000)
+    profile = {
+        "driver": "GTiff", "width": cells, "height": cells, "count": 1, "dtype": "float32",
+        "crs": "EPSG:32626", "transform": from_bounds(*bounds, cells, cells),
+    }  # fmt: skip
+    with rasterio.open(folder / "terrain.tif", "w", **profile) as raster:
+        raster.write(terrain, 1)
+    return terrain
+
+
+def _water_vapour(x, y, height, hours: int, draw):
+    """Values (hours, stations) of moving waves, an exponential profile and noise [kg m-2]."""
+    hour = np.arange(hours)[:, None]
+    field = 22.0 + 4.0 * np.sin(hour / 40.0)
+    for _ in range(12):
+        wave = draw.uniform(-1, 1, 2) / draw.uniform(20e3, 120e3)
+        field = field + np.sin(wave[0] * x + wave[1] * y + hour * draw.uniform(-0.3, 0.3))
+    scale_height = 2000.0 + 200.0 * np.sin(hour / 30.0)
+    return field * np.exp(-height / scale_height) + draw.normal(0, 0.6, field.shape)
+
+
+def _outages(hours: int, stations: int, share: float, draw):
+    """Missing values (hours, stations) bool in outages of 3 to 9 hours."""
+    missing = np.zeros((hours, stations), bool)
+    while missing.mean() < share:
+        start, station = draw.integers(-5, hours), draw.integers(stations)
+        missing[max(start, 0) : start + draw.integers(3, 10), station] = True
+    return missing
+
+
+def _write_delays(folder: Path, x, y, height, values) -> None:
+    import pandas as pd
+    import pyproj
+
+    to_degrees = pyproj.Transformer.from_crs("EPSG:32626", "EPSG:4326", always_xy=True)
+    longitude, latitude = to_degrees.transform(x + 300000, y + 5100000)
+    hour, station = np.nonzero(np.isfinite(values))
+    table = pd.DataFrame(
+        {
+            "station": np.array([f"S{index:03d}" for index in range(len(x))])[station],
+            "time": np.datetime_as_string(START + hour.astype("m8[h]"), timezone="UTC"),
+            "pwv": values[hour, station].round(3),
+            "pwv_sigma": 0.7,
+            "longitude": longitude[station].round(6),
+            "latitude": latitude[station].round(6),
+            "orthometric_height": height[station].round(1),
+        }
+    )
+    table.to_csv(folder / "delays.csv", index=False)
