@@ -7,6 +7,7 @@ in any order, alone or together, and come out the same.
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from datetime import timedelta
 
 import numpy as np
 import xarray as xr
@@ -18,7 +19,8 @@ from fieldgen.kriging.fitting import (
     fit_covariance,
     fit_scale_height,
 )
-from fieldgen.kriging.solver import Gaps, Kriging, PlaceMaker, Places
+from fieldgen.kriging.places import PlaceMaker, Places
+from fieldgen.kriging.solver import Gaps, Kriging
 from fieldgen.settings import KrigingTable, ScreeningTable, Settings
 from fieldgen.station.heights import reduction_factor
 from fieldgen.station.screening import (
@@ -34,6 +36,17 @@ MINIMUM_STATIONS = 5
 EXCESS_RATIO = 1.5
 """An hour whose error variance is above this many times the station's usual one has its own."""
 
+VARIANCE_FREEDOM = 10
+"""Degrees of freedom that the expected factor has against the hour's own: with ten stations both
+count alike."""
+
+LEAST_MOISTURE = 1.0
+"""Mean water vapour [kg m-2] below which air does not count as drier still."""
+
+SCALE_HEIGHT_MEMORY = timedelta(hours=3)
+"""Time after which an hour's scale height says little about the present one. Common practice, no
+source."""
+
 ROUNDS = 2
 """Fits and screenings in turn: what the first screening throws out has spoilt the first fit."""
 
@@ -43,16 +56,18 @@ class Window:
     """The stations that report in a window of hours.
 
     index : (n,) into the network's stations
-    pwv, sigma : (t, n) [kg m-2] at the stations' own heights, NaN where a series test failed
+    day : the hours of the day among those of the window
+    pwv, sigma : (t, n) [kg m-2] at the stations' own heights, NaN where a series test failed;
+        sigma without what all stations share
     height : (n,) orthometric [m]
     """
 
     index: np.ndarray
+    day: slice
     pwv: np.ndarray
     sigma: np.ndarray
     height: np.ndarray
     places: Places
-    maker: PlaceMaker
     reference_height: float
 
     def at_reference(self, scale_height):
@@ -67,8 +82,9 @@ class Model:
     """What the field of a window looks like.
 
     scale_height, scale_height_sigma : (t,) [m]
-    values, excess : (t, n) at the reference height [kg m-2], [kg2 m-4]; values NaN where not
-        trusted
+    values : (t, n) at the reference height [kg m-2]; NaN where not trusted
+    excess : (t, n) error variance beyond the usual [kg2 m-4]
+    variance_factor : (t,) of the hour's kriging variance
     gaps : one an hour
     """
 
@@ -78,6 +94,7 @@ class Model:
     scale_height_sigma: np.ndarray
     values: np.ndarray
     excess: np.ndarray
+    variance_factor: np.ndarray
     gaps: list[Gaps]
 
 
@@ -104,43 +121,50 @@ def reference_height(settings: Settings, stations: xr.Dataset) -> float:
     return float(np.round(np.median(stations.orthometric_height.values), -1))
 
 
-def analyse_day(settings: Settings, stations: xr.Dataset, first: int, last: int) -> Day:
+def locate(settings: Settings, stations: xr.Dataset) -> tuple[PlaceMaker, Places]:
+    """Places of all stations of a network, and what makes places of others."""
+    longitude, latitude = stations.longitude.values, stations.latitude.values
+    maker = PlaceMaker(longitude, latitude, settings.kriging.drift)
+    lift = (stations.orthometric_height.values - reference_height(settings, stations)) / 1000.0
+    return maker, maker.places(longitude, latitude, lift)
+
+
+def analyse_day(
+    settings: Settings, stations: xr.Dataset, places: Places, first: int, last: int
+) -> Day:
     """Analysis of the hours first <= index < last of `stations`, all of one day.
 
     stations : what `retrieve_water_vapour` returns, with the window before the day
+    places : of all stations, see `locate`
     """
     step = settings.network.time_step
     start = max(last - int(settings.kriging.window / step), 0)
     start = min(start, first)
-    window = _make_window(settings, stations, slice(start, last))
     day = slice(first - start, last - start)
+    window = _make_window(settings, stations, places, slice(start, last), day)
     of_day = stations.isel(time=slice(first, last))
     if window is None:
         nothing = np.full(of_day.flag.shape, np.nan)
         return Day(None, None, np.zeros(last - first, bool), _assign(of_day, 0, nothing, nothing))
     model, disagree, out = _model_window(settings, window)
-    window, model = _cut(window, model, day)
+    window, model = _cut(window, model)
     of_day = _with_tests(of_day, window, model, disagree[day], out)
     return Day(window, model, _makable(window, model), of_day)
 
 
-def _make_window(settings: Settings, stations: xr.Dataset, rows: slice) -> Window | None:
+def _make_window(settings: Settings, stations: xr.Dataset, places: Places, rows: slice, day: slice):
     """Window of the rows of time; None if fewer than two stations report in it."""
-    piece = stations.isel(time=rows)
-    usable = np.where(piece.flag.values == 0, piece.pwv.values, np.nan)
+    usable = np.where(stations.flag.values[rows] == 0, stations.pwv.values[rows], np.nan)
     index = np.flatnonzero(np.isfinite(usable).any(axis=0))
     if len(index) < 2:
         return None
-    near = piece.isel(station=index)
-    place = near.longitude.values, near.latitude.values
-    maker = PlaceMaker(*place, settings.kriging.drift)
     return Window(
         index=index,
+        day=day,
         pwv=usable[:, index],
-        sigma=near.pwv_sigma.values,
-        height=near.orthometric_height.values,
-        places=maker.places(*place),
-        maker=maker,
+        sigma=stations.pwv_independent_sigma.values[rows][:, index],
+        height=stations.orthometric_height.values[index],
+        places=places[index],
         reference_height=reference_height(settings, stations),
     )
 
@@ -149,35 +173,56 @@ def _model_window(settings: Settings, window: Window):
     """Model of a window, its disagreements (t, n) bool and condemned stations (n,) bool."""
     present = np.isfinite(window.pwv)
     trusted = present
-    scale = np.full(len(window.pwv), settings.heights.prior)
     for _ in range(ROUNDS):
-        model = _fit_model(settings, window, trusted, scale)
+        model = _fit_model(settings, window, trusted)
         disagree, out = _screen(settings.screening, window, model)
-        trusted = present & ~disagree & ~out
-        scale = model.scale_height
-    return _fit_model(settings, window, trusted, scale), disagree, out
+        good = present & ~disagree & ~out
+        if (good == trusted).all():
+            return model, disagree, out
+        trusted = good
+    return _fit_model(settings, window, trusted), disagree, out
 
 
-def _fit_model(settings: Settings, window: Window, trusted, scale) -> Model:
-    """Covariance for given scale heights, then the scale heights of that covariance."""
+def _fit_model(settings: Settings, window: Window, trusted) -> Model:
+    """Covariance, then the scale heights of that covariance, then the values they reduce to."""
+    prior = np.full(len(window.pwv), settings.heights.prior)
+    values, variance = window.at_reference(prior)
+    values = np.where(trusted, values, np.nan)
+    usual = _usual(variance)
+    moisture = _relative_moisture(values, window.day)
+    fit = _fit_covariance(
+        settings.kriging,
+        values / moisture[:, None],
+        usual * np.mean(moisture**-2.0),
+        window.places,
+    )
+    kriging = Kriging(fit.covariance, window.places, usual)
+    scale, sigma = _fit_scale_heights(settings, window, kriging, values)
     values, variance = window.at_reference(scale)
     values = np.where(trusted, values, np.nan)
-    fit = _fit_covariance(settings.kriging, values, variance, window.places)
-    kriging = Kriging(fit.covariance, window.places, _usual(variance))
-    scale, sigma = _fit_scale_heights(settings, window, kriging, values, trusted)
-    values, variance = window.at_reference(scale)
     usual = _usual(variance)
     excess = np.nan_to_num(np.where(variance > EXCESS_RATIO * usual, variance - usual, 0.0))
     kriging = Kriging(fit.covariance, window.places, usual)
     gaps = [kriging.gaps(~row, more) for row, more in zip(trusted, excess, strict=True)]
-    return Model(fit, kriging, scale, sigma, np.where(trusted, values, np.nan), excess, gaps)
+    factor = _variance_factor(kriging, values, gaps, moisture**2)
+    return Model(fit, kriging, scale, sigma, values, excess, factor, gaps)
 
 
-def _fit_covariance(table: KrigingTable, values, variance, places: Places) -> CovarianceFit:
+def _fit_covariance(table: KrigingTable, values, usual_variance, places: Places) -> CovarianceFit:
     if table.partial_sill is not None:
-        fixed = Covariance(table.covariance, table.partial_sill, table.range, table.nugget)
+        fixed = Covariance(
+            table.covariance,
+            table.partial_sill,
+            table.range,
+            table.nugget,
+            table.slope_sill,
+            table.curvature_sill,
+        )
         return CovarianceFit(fixed, False, "as set")
-    return fit_covariance(values, variance, places, table.covariance)
+    if np.ptp(places.lift) > 0.0:  # each hour's scale height is not variability of the field
+        places = places._replace(drift=np.column_stack([places.drift, places.lift]))
+    profile = table.engine != "pykrige"  # its covariances depend on distance alone
+    return fit_covariance(values, usual_variance, places, table.covariance, profile=profile)
 
 
 def _usual(variance):
@@ -185,24 +230,53 @@ def _usual(variance):
     return np.nanmedian(variance, axis=0)
 
 
-def _fit_scale_heights(settings: Settings, window: Window, kriging: Kriging, values, trusted):
+def _fit_scale_heights(settings: Settings, window: Window, kriging: Kriging, values):
     """Scale height and its standard error (t,) [m], each hour from its own stations."""
     heights = settings.heights
     count = len(values)
     if heights.scale_height != "estimated":
         return np.full(count, heights.scale_height), np.full(count, heights.prior_sigma)
-    prior = ScaleHeight(heights.prior, heights.prior_sigma)
-    found = [prior] * count
-    for hour in np.flatnonzero(trusted.sum(axis=1) >= MINIMUM_STATIONS):
-        found[hour] = fit_scale_height(
+    usual = ScaleHeight(heights.prior, heights.prior_sigma)
+    kept = np.exp(-settings.network.time_step / SCALE_HEIGHT_MEMORY)
+    found = [usual]
+    for water_vapour, at_reference in zip(window.pwv, values, strict=True):
+        prior = usual.remembering(found[-1], kept)
+        trusted = np.isfinite(at_reference)
+        if trusted.sum() < MINIMUM_STATIONS:
+            found.append(prior)
+            continue
+        measured = fit_scale_height(
             kriging,
-            kriging.gaps(~trusted[hour]),
-            np.where(trusted[hour], window.pwv[hour], np.nan),
+            kriging.gaps(~trusted),
+            np.where(trusted, water_vapour, np.nan),
             window.height,
-            max(float(np.nanmean(values[hour])), 1.0),
+            max(float(np.nanmean(at_reference)), 1.0),
             prior,
         )
-    return np.array([one.value for one in found]), np.array([one.sigma for one in found])
+        found.append(measured)
+    return np.array([one.value for one in found[1:]]), np.array([one.sigma for one in found[1:]])
+
+
+def _relative_moisture(values, day: slice):
+    """Mean of each hour (t,) over that of the day; hours without any value count as usual.
+
+    The field varies in proportion to it: a dry hour before a front says less of moist air than
+    its plain variance would (common practice, no source).
+    """
+    reporting = np.isfinite(values).any(axis=1)
+    mean = np.full(len(values), np.nan)
+    mean[reporting] = np.maximum(np.nanmean(values[reporting], axis=1), LEAST_MOISTURE)
+    of_day = mean[day] if reporting[day].any() else mean
+    return np.where(reporting, mean / np.nanmean(of_day), 1.0)
+
+
+def _variance_factor(kriging: Kriging, values, gaps: list[Gaps], expected):
+    """How much more or less each hour (t,) varies than the day, drawn towards `expected` (t,)."""
+    filled = np.stack([kriging.fill(*pair) for pair in zip(gaps, values, strict=True)])
+    squares = np.einsum("tn,tn->t", np.nan_to_num(values), filled @ kriging.projector)
+    freedom = np.isfinite(values).sum(axis=1) - kriging.stations.drift.shape[1]
+    freedom = np.maximum(freedom, 0)
+    return (VARIANCE_FREEDOM * expected + squares) / (VARIANCE_FREEDOM + freedom)
 
 
 def _screen(limits: ScreeningTable, window: Window, model: Model):
@@ -252,8 +326,9 @@ def _worst_station(limits: ScreeningTable, model: Model, values) -> int | None:
     )
 
 
-def _cut(window: Window, model: Model, day: slice) -> tuple[Window, Model]:
+def _cut(window: Window, model: Model) -> tuple[Window, Model]:
     """The same with the hours of the day alone."""
+    day = window.day
     cut_window = replace(window, pwv=window.pwv[day], sigma=window.sigma[day])
     cut_model = replace(
         model,
@@ -261,6 +336,7 @@ def _cut(window: Window, model: Model, day: slice) -> tuple[Window, Model]:
         scale_height_sigma=model.scale_height_sigma[day],
         values=model.values[day],
         excess=model.excess[day],
+        variance_factor=model.variance_factor[day],
         gaps=model.gaps[day],
     )
     return cut_window, cut_model

@@ -12,6 +12,7 @@ import xarray as xr
 from fieldgen.day_maker import DayMaker, DayWriter, colour_limits
 from fieldgen.fields import join_fields
 from fieldgen.period import Piece, pieces
+from fieldgen.products.field_file import unpack_fields
 from fieldgen.readers.network import Network
 from fieldgen.report import DayReport, RunReport
 from fieldgen.retrieval import retrieve_water_vapour
@@ -21,13 +22,13 @@ def make_fields(network: Network, start: str | None = None, end: str | None = No
     """Fields of a network's hours, the same Dataset as the field files hold.
 
     start, end : ISO 8601 UTC, by default all hours of the input. Dimensions time, y, x; see
-    `fieldgen.products.field_file.field_dataset`. Hours with too few stations are NaN and flagged.
+    `fieldgen.products.field_file.packed_dataset`. Hours with too few stations are NaN and flagged.
     Raises InputError if the period is reversed or holds no step of the input.
     """
     maker = DayMaker(network, retrieve_water_vapour(network))
     made = [maker.compute(piece) for piece in _pieces(network, start, end)]
     time = np.concatenate([day.stations.time.values for day, _ in made])
-    return maker.field_dataset(time, join_fields([fields for _, fields in made]))
+    return unpack_fields(maker.packed_dataset(time, join_fields([fields for _, fields in made])))
 
 
 def make(

@@ -3,17 +3,20 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import numpy as np
 import xarray as xr
 from threadpoolctl import threadpool_limits
 
-from fieldgen.analysis import Day, analyse_day, reference_height
+from fieldgen.analysis import Day, analyse_day, locate, reference_height
 from fieldgen.constants import REFRACTIVITY
-from fieldgen.fields import FIELD_FLAGS, Fields, make_fields_of_day
+from fieldgen.fields import FIELD_FLAGS, CellMaker, Fields, make_fields_of_day
+from fieldgen.kriging.places import PlaceMaker, Places
 from fieldgen.period import Piece
-from fieldgen.products.field_file import field_dataset, write_fields
+from fieldgen.products.field_file import packed_dataset, unpack_fields, write_fields
 from fieldgen.products.station_file import station_dataset, write_stations
 from fieldgen.readers.network import Network
 from fieldgen.report import DayReport, report_day
@@ -21,6 +24,9 @@ from fieldgen.settings import Settings
 from fieldgen.station.heights import reduction_factor
 from fieldgen.station.screening import STATION_FLAGS
 from fieldgen.station.surface_air import PRESSURE_SOURCES
+
+if TYPE_CHECKING:
+    from fieldgen.products.maps import MapPainter
 
 LIMITS_WITHOUT_DATA = (0.0, 50.0)
 """Colour limits where no station has a value [kg m-2]."""
@@ -36,17 +42,26 @@ class DayMaker:
     network: Network
     stations: xr.Dataset
 
+    @cached_property
+    def _places(self) -> tuple[PlaceMaker, Places]:
+        return locate(self.network.settings, self.stations)
+
+    @cached_property
+    def _cells(self) -> CellMaker:
+        network, reference = self.network, reference_height(self.network.settings, self.stations)
+        return CellMaker(network.grid, network.terrain, *self._places, reference)
+
     def compute(self, piece: Piece) -> tuple[Day, Fields]:
         """Model and fields of a day."""
-        network = self.network
+        settings = self.network.settings
         with threadpool_limits(1):  # results must not depend on how BLAS splits its sums
-            day = analyse_day(network.settings, self.stations, piece.first, piece.last)
-            return day, make_fields_of_day(network.settings, network.grid, network.terrain, day)
+            day = analyse_day(settings, self.stations, self._places[1], piece.first, piece.last)
+            return day, make_fields_of_day(settings, self._cells, day)
 
-    def field_dataset(self, time, fields: Fields) -> xr.Dataset:
-        """Fields (t, ny, nx) of one or several days with all their metadata."""
+    def packed_dataset(self, time, fields: Fields) -> xr.Dataset:
+        """Fields (t, ny, nx) of one or several days with all their metadata, packed."""
         network = self.network
-        return field_dataset(
+        return packed_dataset(
             grid=network.grid,
             terrain_height=network.terrain.mean,
             time=time,
@@ -67,18 +82,23 @@ class DayMaker:
         )
 
 
-@dataclass(frozen=True)
+@dataclass
 class DayWriter:
-    """Makes days and writes their files below a folder; limits: of the maps' colours [kg m-2]."""
+    """Makes days and writes their files below a folder.
+
+    limits : of the maps' colours [kg m-2]
+    painter : of this process, its base drawn for the first day and kept
+    """
 
     maker: DayMaker
     folder: Path
     limits: tuple[float, float]
+    painter: MapPainter | None = None
 
     def __call__(self, piece: Piece, maps: str) -> DayReport:
         """Make, write and draw one day; maps: which of its hours are drawn."""
         day, fields = self.maker.compute(piece)
-        dataset = self.maker.field_dataset(day.stations.time.values, fields)
+        dataset = self.maker.packed_dataset(day.stations.time.values, fields)
         stations = self.maker.station_dataset(day)
         paths = [
             self.folder / "fields" / f"pwv_{piece.name}.nc",
@@ -96,13 +116,10 @@ class DayWriter:
 
         if maps == "latest":
             dataset, stations = dataset.isel(time=[-1]), stations.isel(time=[-1])
-        return write_maps(dataset, stations, self.folder / "maps", self._painter(dataset))
-
-    def _painter(self, dataset: xr.Dataset):
-        """The painter of this process, its base drawn for the first day and kept."""
-        if "painter" not in self.__dict__:
-            self.__dict__["painter"] = self._make_painter(dataset)
-        return self.__dict__["painter"]
+        dataset = unpack_fields(dataset)
+        if self.painter is None:
+            self.painter = self._make_painter(dataset)
+        return write_maps(dataset, stations, self.folder / "maps", self.painter)
 
     def _make_painter(self, dataset: xr.Dataset):
         from fieldgen.products.maps import MapPainter, read_geometries

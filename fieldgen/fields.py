@@ -1,8 +1,11 @@
-"""A day's model -> its fields on the grid: krige at the reference height, lift with the terrain."""
+"""A day's model -> its fields on the grid: krige at the reference height, lift with the terrain.
+
+Fields are packed as the files hold them, in steps of 0.01 kg m-2, as soon as they are computed.
+"""
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass, fields
 
 import numpy as np
@@ -11,9 +14,12 @@ from fieldgen.analysis import Day, Model, Window
 from fieldgen.ground.grid import Grid
 from fieldgen.ground.terrain import Terrain
 from fieldgen.kriging.covariance import distances
-from fieldgen.kriging.pykrige_engine import krige_hours_with_pykrige
-from fieldgen.kriging.solver import Places, krige_hours
+from fieldgen.kriging.places import PlaceMaker, Places
+from fieldgen.kriging.pykrige_engine import krige_with_pykrige
+from fieldgen.kriging.solver import hour_variance
+from fieldgen.quantities import MISSING, PACKED_STEP
 from fieldgen.settings import Settings
+from fieldgen.station.delay import common_sigma
 
 FIELD_FLAGS = {
     "extrapolated_in_height": 1,
@@ -33,15 +39,18 @@ HEIGHT_TOLERANCE = 50.0
 CELLS_AT_ONCE = 100_000
 """Cells whose weights are held in memory together."""
 
-ENGINES: dict[str, Callable] = {"fieldgen": krige_hours, "pykrige": krige_hours_with_pykrige}
+KEPT_DISTANCES = 40_000_000
+"""Distances between stations and cells that are kept from day to day, 4 bytes each."""
 
 
 @dataclass
 class Fields:
-    """Fields of one day, float32, NaN where missing.
+    """Fields of one or several days, packed as the files hold them.
 
-    pwv, sigma, at_reference : (t, ny, nx) [kg m-2], flag : (t, ny, nx) uint8
-    scale_height : (t,) [m], station_count : (t,), clipped : cells below zero, written as zero
+    pwv, sigma, at_reference : (t, ny, nx) int16, steps of 0.01 kg m-2, `MISSING` where missing
+    flag : (t, ny, nx) int8, bits of `FIELD_FLAGS`
+    scale_height : (t,) [m], NaN where missing; station_count : (t,)
+    clipped : cells and hours below zero, written as zero
     """
 
     pwv: np.ndarray
@@ -63,90 +72,196 @@ def join_fields(parts: list[Fields]) -> Fields:
     return Fields(**arrays, clipped=sum(part.clipped for part in parts))
 
 
-def make_fields_of_day(settings: Settings, grid: Grid, terrain: Terrain, day: Day) -> Fields:
-    """Fields of one day; hours with too few stations are NaN and flagged."""
-    made = _empty(day, grid)
-    flat = {
-        name: getattr(made, name).reshape(len(day.makable), -1)
-        for name in ("pwv", "sigma", "at_reference", "flag")
-    }
-    longitude, latitude = (part.ravel() for part in grid.longitude_latitude)
-    points = terrain.points.reshape(len(terrain.points), -1)
-    flat["flag"] |= np.where(terrain.is_sea.ravel(), FIELD_FLAGS["sea"], 0).astype(np.uint8)
-    flat["flag"][~day.makable] |= FIELD_FLAGS["too_few_stations"]
-    if not day.makable.any():
-        return made
-    for start in range(0, points.shape[1], CELLS_AT_ONCE):
-        cells = slice(start, start + CELLS_AT_ONCE)
-        targets = day.window.maker.places(longitude[cells], latitude[cells])
-        piece = {name: array[:, cells] for name, array in flat.items()}
-        made.clipped += _make_piece(settings, day, targets, points[:, cells], piece)
+@dataclass(frozen=True)
+class Cells:
+    """Some cells of the grid as targets of kriging.
+
+    rows : their slice of the flattened grid
+    places : Places of the m cells, lift from the mean height
+    points : (k, m) heights [m] within the cells, ground : (m,) their mean
+    distance : (n, m) [km] from all stations of the network, float32
+    """
+
+    rows: slice
+    places: Places
+    points: np.ndarray
+    ground: np.ndarray
+    distance: np.ndarray
+
+
+class CellMaker:
+    """The grid's cells in pieces, which one pass over a day takes one after the other."""
+
+    def __init__(
+        self, grid: Grid, terrain: Terrain, maker: PlaceMaker, stations: Places, reference: float
+    ):
+        """stations : places of all stations of the network; reference : reference height [m]"""
+        self.shape = grid.shape
+        self.is_sea = terrain.is_sea.ravel()
+        self.maker, self.stations, self.reference = maker, stations, reference
+        self.longitude, self.latitude = (part.ravel() for part in grid.longitude_latitude)
+        self.points = terrain.points.reshape(len(terrain.points), -1)
+        keeps = len(stations.lift) * len(self.is_sea) <= KEPT_DISTANCES
+        self._kept = list(self._make()) if keeps else None
+
+    def __iter__(self) -> Iterator[Cells]:
+        return iter(self._kept if self._kept is not None else self._make())
+
+    def _make(self) -> Iterator[Cells]:
+        for start in range(0, len(self.is_sea), CELLS_AT_ONCE):
+            rows = slice(start, start + CELLS_AT_ONCE)
+            points = self.points[:, rows]
+            ground = points.mean(axis=0)
+            places = self.maker.places(
+                self.longitude[rows], self.latitude[rows], (ground - self.reference) / 1000.0
+            )
+            distance = distances(self.stations.positions, places.positions).astype(np.float32)
+            yield Cells(rows, places, points, ground, distance)
+
+
+@dataclass(frozen=True)
+class Solution:
+    """What kriging says of some cells, at the reference height; t hours, m cells.
+
+    lifted : (t, m) with the local change with height up to the terrain; level : (t, m) without
+    variance : of `lifted`, a function of the hour's number
+    station_height : (m,) mean height [m] of the stations that a cell's value comes from
+    """
+
+    lifted: np.ndarray
+    level: np.ndarray
+    variance: Callable[[int], np.ndarray]
+    station_height: np.ndarray
+
+
+def _solve(window: Window, model: Model, hours, cells: Cells) -> Solution:
+    """Solution of the default engine: one set of weights for all hours."""
+    kriging, gaps = model.kriging, [model.gaps[hour] for hour in hours]
+    distance = cells.distance[window.index]
+    filled = np.stack(
+        [kriging.fill(*pair) for pair in zip(gaps, model.values[hours], strict=True)]
+    ).astype(np.float32)
+    weights = kriging.weights(cells.places, distance=distance)
+    lifted = level = filled @ weights.values
+    if kriging.covariance.slope_sill or kriging.covariance.curvature_sill:
+        flat = cells.places._replace(lift=np.zeros(len(cells.ground)))
+        level = filled @ kriging.weights(flat, distance=distance).values
+    return Solution(
+        lifted,
+        level,
+        lambda row: hour_variance(weights, gaps[row]),
+        window.height.astype(np.float32) @ weights.values,
+    )
+
+
+def _solve_with_pykrige(window: Window, model: Model, hours, cells: Cells) -> Solution:
+    """Solution of PyKrige, hour by hour; the heights of the stations are kriged like a field."""
+    rows = np.vstack([model.values[hours], window.height])
+    field, variance = krige_with_pykrige(model.kriging, cells.places, rows)
+    return Solution(field[:-1], field[:-1], lambda row: variance[row], field[-1])
+
+
+ENGINES: dict[str, Callable[..., Solution]] = {
+    "fieldgen": _solve,
+    "pykrige": _solve_with_pykrige,
+}
+
+
+def make_fields_of_day(settings: Settings, cells: CellMaker, day: Day) -> Fields:
+    """Fields of one day; hours with too few stations are missing and flagged."""
+    made = _empty(day, cells)
+    hours = np.flatnonzero(day.makable)
+    if len(hours):
+        for piece in cells:
+            made.clipped += _fill_piece(settings, cells.reference, day, hours, piece, made)
     return made
 
 
-def _empty(day: Day, grid: Grid) -> Fields:
-    shape = (len(day.makable), *grid.shape)
-    scale_height = np.full(shape[0], np.nan)
+def _empty(day: Day, cells: CellMaker) -> Fields:
+    steps = len(day.makable)
+    flag = np.tile((FIELD_FLAGS["sea"] * cells.is_sea).astype(np.int8), (steps, 1))
+    flag[~day.makable] |= FIELD_FLAGS["too_few_stations"]
+    scale_height = np.full(steps, np.nan)
     if day.model is not None:
         scale_height[day.makable] = day.model.scale_height[day.makable]
     used = (day.stations.flag.values == 0).sum(axis=1)
+    shape = (steps, *cells.shape)
     return Fields(
-        *(np.full(shape, np.nan, np.float32) for _ in range(3)),
-        flag=np.zeros(shape, np.uint8),
+        *(np.full(shape, MISSING, np.int16) for _ in range(3)),
+        flag=flag.reshape(shape),
         scale_height=scale_height,
         station_count=used.astype(np.int16),
     )
 
 
-def _make_piece(settings: Settings, day: Day, targets: Places, points, piece) -> int:
-    """Fill the cells of a piece (t, m) of the fields; returns how many values were clipped."""
-    hours = np.flatnonzero(day.makable)
+def _fill_piece(
+    settings: Settings, reference: float, day: Day, hours, cells: Cells, made: Fields
+) -> int:
+    """Fill some cells of the fields; returns how many values were clipped."""
     window, model = day.window, day.model
-    values = model.values[hours]
-    gaps = [model.gaps[hour] for hour in hours]
-    engine = ENGINES[settings.kriging.engine]
-    reference, variance = engine(model.kriging, targets, values, gaps)
-    lifted = _lifted_height(window, model, targets, points)
+    solution = ENGINES[settings.kriging.engine](window, model, hours, cells)
+    way = np.abs(cells.ground - solution.station_height)
+    far = _FarCells(cells.distance[window.index] <= settings.kriging.far_distance)
+    constant = day.stations.common_sigma.values.astype(np.float32)
+    relative = day.stations.common_relative_sigma.values.astype(np.float32)
     clipped = 0
     for row, hour in enumerate(hours):
-        factor = _mean_factor(points, window.reference_height, model.scale_height[hour])
-        pwv = reference[row] * factor
-        height_sigma = (
-            pwv * lifted * (model.scale_height_sigma[hour] / model.scale_height[hour] ** 2)
+        scale = model.scale_height[hour]
+        factor = np.exp((reference - cells.points) / np.float32(scale)).mean(axis=0)
+        pwv = solution.lifted[row] * factor
+        sigma = _sigma(
+            pwv,
+            solution.variance(row) * factor**2 * np.float32(model.variance_factor[hour]),
+            way * np.float32(model.scale_height_sigma[hour] / scale**2),
+            common_sigma(pwv, constant[hour], relative[hour]),
         )
-        sigma = np.hypot(np.sqrt(np.maximum(variance[row], 0.0)) * factor, height_sigma)
-        clipped += int((pwv < 0).sum())
-        piece["pwv"][hour] = np.maximum(pwv, 0.0)
-        piece["sigma"][hour] = sigma
-        piece["at_reference"][hour] = np.maximum(reference[row], 0.0)
-        piece["flag"][hour] |= _quality(settings, window, values[row], targets, points, sigma)
+        present = np.isfinite(model.values[hour])
+        flags = _quality(window.height[present], cells.ground, sigma)
+        flags |= far.flags(present)
+        clipped += int((pwv < 0.0).sum())
+        for field, values in zip(
+            (made.pwv, made.sigma, made.at_reference),
+            (pwv, sigma, solution.level[row]),
+            strict=True,
+        ):
+            field[hour].reshape(-1)[cells.rows] = _pack(values)
+        made.flag[hour].reshape(-1)[cells.rows] |= flags
     return clipped
 
 
-def _mean_factor(points, reference_height: float, scale_height: float):
-    """Mean over each cell's points (k, m) of PWV(h)/PWV(reference), not that of the mean height."""
-    return np.exp((reference_height - points) / np.float32(scale_height)).mean(axis=0)
+def _sigma(pwv, kriging_variance, relative_height_sigma, common):
+    """Standard error [kg m-2]: kriging, the scale height over the way lifted, the common error.
 
-
-def _lifted_height(window: Window, model: Model, targets: Places, points):
-    """Height (m,) [m] between each cell and the stations that its value comes from.
-
-    Stations are brought down and cells brought up with the same scale height, so only the
-    difference to the kriged height of the stations suffers from its error.
+    Stations are brought down and cells brought up with the same scale height, so only the height
+    between a cell and the stations its value comes from suffers from its error.
     """
-    weights = model.kriging.weights(targets)
-    return np.abs(points.mean(axis=0) - window.height.astype(np.float32) @ weights.values)
+    return np.sqrt(kriging_variance + np.square(pwv * relative_height_sigma) + np.square(common))
 
 
-def _quality(settings: Settings, window: Window, values, targets: Places, points, sigma):
-    """Flag bits (m,) of one hour."""
-    used = np.isfinite(values)
-    height, ground = window.height[used], points.mean(axis=0)
-    beyond = (ground > height.max() + HEIGHT_TOLERANCE) | (ground < height.min() - HEIGHT_TOLERANCE)
-    near = distances(window.places.positions[used], targets.positions).min(axis=0)
-    far = near > settings.kriging.far_distance
-    return (
-        FIELD_FLAGS["extrapolated_in_height"] * beyond
-        + FIELD_FLAGS["far_from_stations"] * far
-        + FIELD_FLAGS["sigma_above_5_kg_m2"] * (sigma > UNUSABLE_SIGMA)
-    ).astype(np.uint8)
+def _pack(values):
+    """Values [kg m-2] in packed steps; below zero as zero."""
+    return np.rint(np.clip(values, 0.0, 320.0) * np.float32(1.0 / PACKED_STEP)).astype(np.int16)
+
+
+def _quality(heights, ground, sigma):
+    """Flag bits (m,) of an hour with stations at `heights` [m]."""
+    beyond = (ground > heights.max() + HEIGHT_TOLERANCE) | (
+        ground < heights.min() - HEIGHT_TOLERANCE
+    )
+    flags = beyond.astype(np.int8) * np.int8(FIELD_FLAGS["extrapolated_in_height"])
+    unusable = (sigma > UNUSABLE_SIGMA).astype(np.int8)
+    return flags | unusable * np.int8(FIELD_FLAGS["sigma_above_5_kg_m2"])
+
+
+class _FarCells:
+    """Cells without a station near them, quick to tell for any set of stations."""
+
+    def __init__(self, near):
+        """near : (n, m) bool, station within the limit of the cell"""
+        self._near = near
+        self._count = near.sum(axis=0, dtype=np.int16)
+
+    def flags(self, present):
+        """Flag bits (m,) with the stations present (n,) bool."""
+        missing = self._near[~present].sum(axis=0, dtype=np.int16)
+        return (self._count == missing).astype(np.int8) * np.int8(FIELD_FLAGS["far_from_stations"])

@@ -7,6 +7,12 @@ from __future__ import annotations
 
 from typing import NamedTuple
 
+PACKED_STEP = 0.01
+"""Step of packed water vapour [kg m-2], a hundredth of what the best user asks for."""
+
+MISSING = -32768
+"""Packed value that stands for a missing one."""
+
 
 class Quantity(NamedTuple):
     """What a variable is. `standard_name` is empty where CF has none; `content` is ACDD's type."""

@@ -10,10 +10,11 @@ from fieldgen.quantities import QUANTITIES
 from fieldgen.readers.network import Network
 from fieldgen.settings import RetrievalTable, Settings
 from fieldgen.station.delay import (
+    common_sigma,
     conversion_factor,
     hydrostatic_delay,
+    independent_sigma,
     mean_temperature,
-    water_vapour_sigma,
 )
 from fieldgen.station.screening import STATION_FLAGS, formal_error_too_large, jumps
 from fieldgen.station.surface_air import (
@@ -37,8 +38,10 @@ def retrieve_water_vapour(network: Network) -> xr.Dataset:
     """Water vapour of every station and hour, Dataset (time, station).
 
     ztd, ztd_sigma, zhd, zwd [m], pressure [hPa], pressure_source, mean_temperature [K], pwv,
-    pwv_sigma [kg m-2] and flag, zero where the value passes every test on its own series; with
-    the stations' places. Odd barometers and heights are added to ``network.report``.
+    pwv_sigma, pwv_independent_sigma [kg m-2] and flag, zero where the value passes every test on
+    its own series; common_sigma [kg m-2] and common_relative_sigma by time, what the stations'
+    errors have in common; with the stations' places. Odd barometers and heights are added to
+    ``network.report``.
     """
     settings, stations, delays = network.settings, network.stations, network.delays
     air = _air_at_antennas(network)
@@ -48,21 +51,38 @@ def retrieve_water_vapour(network: Network) -> xr.Dataset:
     )
     tm, factor, relative_sigma = _conversion(settings.retrieval, air)
     zwd = delays.ztd.values - zhd
-    pwv = factor * zwd
-    pwv_sigma = water_vapour_sigma(factor, pwv, sigma, air.pressure_sigma, relative_sigma)
     given = np.isnan(delays.ztd.values) & np.isfinite(delays.pwv.values)
-    pwv = np.where(given, delays.pwv.values, pwv)
-    given_sigma = np.fmax(delays.pwv_sigma.values, factor * settings.retrieval.ztd_sigma_floor)
-    pwv_sigma = np.where(given, given_sigma, pwv_sigma)
+    pwv = np.where(given, delays.pwv.values, factor * zwd)
+    own_sigma = independent_sigma(factor, sigma, air.pressure_sigma)
+    own_sigma = np.where(given, _given_sigma(delays, factor, settings.retrieval), own_sigma)
+    constant = np.where(given, 0.0, settings.retrieval.common_sigma)
+    relative_sigma = np.where(given, 0.0, relative_sigma)
+    pwv_sigma = np.hypot(own_sigma, common_sigma(pwv, constant, relative_sigma))
     variables = {
         "ztd": delays.ztd.values, "ztd_sigma": sigma, "zhd": zhd, "zwd": zwd,
         "pressure": air.pressure, "pressure_source": air.source, "mean_temperature": tm,
-        "pwv": pwv, "pwv_sigma": pwv_sigma,
+        "pwv": pwv, "pwv_sigma": pwv_sigma, "pwv_independent_sigma": own_sigma,
         "flag": _series_flags(settings, delays, given, air, pwv),
     }  # fmt: skip
-    return stations.assign(
-        {name: (("time", "station"), values) for name, values in variables.items()}
-    ).assign_coords(time=delays.time)
+    series = {name: (("time", "station"), values) for name, values in variables.items()}
+    common = _common_sigma_by_hour(pwv, constant, relative_sigma)
+    return stations.assign(series | common).assign_coords(time=delays.time)
+
+
+def _given_sigma(delays: xr.Dataset, factor, settings: RetrievalTable):
+    """Standard error [kg m-2] of water vapour given in a file: its own, or a delay's floor."""
+    given = delays.pwv_sigma.values
+    return np.where(given > 0.0, given, factor * settings.ztd_sigma_floor)
+
+
+def _common_sigma_by_hour(pwv, constant, relative):
+    """Parts (t,) of the error that the stations of an hour share, their mean over the stations."""
+    present = np.isfinite(pwv)
+    count = np.maximum(present.sum(axis=1), 1)
+    return {
+        name: ("time", np.where(present, part, 0.0).sum(axis=1) / count)
+        for name, part in (("common_sigma", constant), ("common_relative_sigma", relative))
+    }
 
 
 def _air_at_antennas(network: Network) -> SurfaceAir:

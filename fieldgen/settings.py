@@ -25,6 +25,7 @@ from pydantic import (
 from fieldgen.constants import MEAN_TEMPERATURE, REFRACTIVITY, MeanTemperature
 from fieldgen.errors import SettingsError
 from fieldgen.kriging.covariance import MODELS
+from fieldgen.kriging.fitting import AUTO
 
 _DURATION_UNITS = {"min": "minutes", "h": "hours", "d": "days"}
 
@@ -50,7 +51,7 @@ def _check_ascending(limits: tuple[float, float]) -> tuple[float, float]:
     return limits
 
 
-def _name_of(family: dict):
+def _name_of(family):
     """Validator for the name of one of a family of published methods."""
 
     def check(name: str) -> str:
@@ -140,6 +141,7 @@ class RetrievalTable(_Table):
     conversion_factor: Annotated[float, Field(ge=100, le=200)] | None = None
     ztd_sigma_scale: Positive = 1.5
     ztd_sigma_floor: NotNegative = 0.004
+    common_sigma: NotNegative = 0.2
     barometer_sigma: Positive = 0.3
     barometer_distance: Positive = 1.0
     pressure: list[Literal["own", "neighbours"]] = Field(["own", "neighbours"], min_length=1)
@@ -189,19 +191,25 @@ class KrigingTable(_Table):
     """``[kriging]``: what the field looks like between the stations."""
 
     engine: Literal["fieldgen", "pykrige"] = "fieldgen"
-    covariance: Annotated[str, _name_of(MODELS)] = "exponential"
+    covariance: Annotated[str, _name_of([*MODELS, AUTO])] = AUTO
     drift: Literal["constant", "linear"] = "constant"
     window: Duration = timedelta(hours=48)
     partial_sill: Positive | None = None
     range: Positive | None = None
     nugget: NotNegative | None = None
+    slope_sill: NotNegative = 0.0
+    curvature_sill: NotNegative = 0.0
     far_distance: Positive = 50.0
 
     @model_validator(mode="after")
-    def _check_all_or_none(self):
+    def _check_together(self):
         fixed = (self.partial_sill, self.range, self.nugget)
         if any(value is None for value in fixed) != all(value is None for value in fixed):
             raise ValueError("expected partial_sill, range and nugget together, or none of them")
+        if self.covariance == AUTO and self.partial_sill is not None:
+            raise ValueError("expected the name of a covariance with fixed parameters")
+        if self.engine == "pykrige" and self.covariance in (AUTO, "matern32"):
+            raise ValueError("expected a covariance that PyKrige knows, such as exponential")
         return self
 
 

@@ -65,7 +65,16 @@ def test_both_engines_make_the_same_fields(tmp_path):
     The errors at the reference height differ with the station's height, so the fields agree to
     the share of the error variance in the sill, not to rounding; tests/kriging has 1e-6.
     """
-    settings = SETTINGS + '[heights]\nscale_height = 1e4\n[kriging]\nengine = "ENGINE"\n'
+    settings = f"""{SETTINGS}
+[heights]
+scale_height = 1e4
+[kriging]
+engine = "ENGINE"
+covariance = "exponential"
+partial_sill = 4.0
+range = 80
+nugget = 0.2
+"""
     fields = {}
     for engine in ("fieldgen", "pykrige"):
         path = write_scene(tmp_path, hours=2, settings=settings.replace("ENGINE", engine))

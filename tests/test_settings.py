@@ -19,7 +19,7 @@ def test_settings_of_the_scene_have_the_defaults(tmp_path):
     """Round trip."""
     settings = read_settings(write(tmp_path, SETTINGS))
     assert settings.grid.spacing == 5000.0
-    assert settings.kriging.covariance == "exponential"
+    assert settings.kriging.covariance == "auto"
     assert settings.network.time_step == timedelta(hours=1)
     assert settings.path("delays.csv") == tmp_path / "delays.csv"
 

@@ -21,6 +21,7 @@ INVERSION = (1.0, 0.0, 2.4)  # warming across a layer above the boundary layer [
 BOUNDARY_LAYER_TOP = (1.6, 2.3, 1.8)  # [km]
 HUMIDITY_LOW = (0.80, 0.85, 0.71)  # relative humidity below it
 HUMIDITY_HIGH = (0.38, 0.46, 0.22)  # and above it
+TROPOPAUSE = 11.0  # the air above it is all but dry [km]
 TROPOPAUSE_TEMPERATURE = 216.0  # [K]
 
 WARM_FRONT = {"passes": 21.0, "speed": 26.0, "bearing": 75.0, "width": 80.0, "lean": 70.0}
@@ -41,8 +42,8 @@ WINDS = [
 ]
 # correlation length [km], spectral slope, strength in ln(humidity), height, depth [km], wind factor
 SWIRLS = {
-    "boundary layer": (38.0, 3.0, 0.045, 0.6, 1.3, 1.0),
-    "free air": (42.0, 3.0, 0.20, 3.4, 1.5, 1.5),
+    "boundary layer": (38.0, 3.0, 0.036, 0.6, 1.3, 1.0),
+    "free air": (42.0, 3.0, 0.15, 3.4, 1.5, 1.5),
     "small": (6.0, 8 / 3, 0.025, 1.0, 2.0, 1.1),
 }
 
@@ -68,7 +69,8 @@ class Weather:
             self._swirling(columns, height, hour) - 0.062 * warming
         )  # warming dries
         saturated = np.clip(humidity, 0.01, 0.99)  # what exceeds saturation has rained out
-        return temperature, saturated * saturation_vapour_pressure(temperature)
+        dryness = np.exp(-np.maximum(height - TROPOPAUSE, 0) / 1.5)
+        return temperature, saturated * dryness * saturation_vapour_pressure(temperature)
 
     def _swirling(self, columns, height, hour):
         """Departure of ln(humidity) by turbulence of the middle scales."""

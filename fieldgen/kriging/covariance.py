@@ -1,6 +1,6 @@
 """Covariance models and the distances they work on.
 
-A covariance is ``C(0) = partial_sill + nugget`` and ``C(d) = partial_sill * correlation(d/range)``.
+At one height ``C(0) = partial_sill + nugget`` and ``C(d) = partial_sill * correlation(d/range)``.
 The nugget is variability of the field itself below the distance between stations; errors of
 measurement are kept apart, in each station's own variance. The definitions of sill, range and
 nugget are PyKrige's: for the exponential model the *range* is where the covariance has fallen to
@@ -14,12 +14,20 @@ from typing import NamedTuple
 import numpy as np
 from scipy.spatial.distance import cdist
 
+_MATERN32_AT_RANGE = 4.7438645
+"""Where (1 + x) exp(-x) is 0.05, so that the range means the same as for the exponential."""
+
 _WGS84_SEMI_MAJOR = 6378.137  # [km]
 _WGS84_ECCENTRICITY_SQUARED = 0.00669437999014
 
 
 def _exponential(lag):
     return np.exp(-3.0 * lag)
+
+
+def _matern32(lag):
+    scaled = _MATERN32_AT_RANGE * lag
+    return (1.0 + scaled) * np.exp(-scaled)
 
 
 def _gaussian(lag):
@@ -31,29 +39,56 @@ def _spherical(lag):
     return 1.0 - 1.5 * lag + 0.5 * lag**3
 
 
-MODELS = {"exponential": _exponential, "gaussian": _gaussian, "spherical": _spherical}
+MODELS = {
+    "exponential": _exponential,
+    "matern32": _matern32,
+    "spherical": _spherical,
+    "gaussian": _gaussian,
+}
 """Correlation as a function of distance over range, by the model's name."""
 
 
 class Covariance(NamedTuple):
     """A covariance model with its parameters.
 
-    partial_sill, nugget [kg2 m-4], range [km].
+    partial_sill, nugget [kg2 m-4], range [km]; slope_sill [kg2 m-4 km-2], curvature_sill [kg2 m-4
+    km-4]. The last two say how far the profile is from the hour's exponential: with `slope_sill` it
+    is steeper at one place than at another, with `curvature_sill` it bends the same way everywhere.
+    Two places `lift` and `other` [km] above the reference height share
+
+        (partial_sill + slope_sill lift other) correlation + curvature_sill lift^2 other^2.
     """
 
     model: str
     partial_sill: float
     range: float
     nugget: float
+    slope_sill: float = 0.0
+    curvature_sill: float = 0.0
 
-    def between(self, distance):
-        """Covariance [kg2 m-4] of two different places, by their distance [km], any shape."""
-        return self.partial_sill * MODELS[self.model](np.asarray(distance) / self.range)
+    def correlation(self, distance):
+        """Correlation of the smooth part of the field by distance [km], any shape."""
+        return MODELS[self.model](distance * (1.0 / self.range))
 
-    @property
-    def sill(self) -> float:
-        """Variance of the field at a point [kg2 m-4]."""
-        return self.partial_sill + self.nugget
+    def between(self, distance, lift, other):
+        """Covariance (n, m) [kg2 m-4] of different places.
+
+        distance (n, m) [km], lift (n,) and other (m,) [km] above the reference height
+        """
+        if not (self.slope_sill or self.curvature_sill):
+            return self.partial_sill * self.correlation(distance)
+        dtype = np.asarray(distance).dtype
+        lift, other = np.asarray(lift, dtype), np.asarray(other, dtype)
+        covariance = self.correlation(distance)
+        covariance *= self.partial_sill + self.slope_sill * np.outer(lift, other)
+        covariance += np.outer(self.curvature_sill * lift**2, other**2)
+        return covariance
+
+    def at(self, lift):
+        """Variance of the field (n,) at points `lift` (n,) [km] above the reference height."""
+        square = np.square(lift)
+        by_height = self.slope_sill * square + self.curvature_sill * square**2
+        return self.partial_sill + self.nugget + by_height
 
 
 def chord_positions(longitude, latitude):

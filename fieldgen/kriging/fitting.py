@@ -9,20 +9,45 @@ Emardson, T. R. et al. (2003), J. Geophys. Res. 108, 2231: the fallback covarian
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
-from scipy.linalg import cho_factor, cho_solve
 from scipy.optimize import minimize
 
-from fieldgen.kriging.covariance import Covariance, distances
-from fieldgen.kriging.solver import Gaps, Kriging, Places
+from fieldgen.kriging.covariance import MODELS, Covariance, distances
+from fieldgen.kriging.places import Places
+from fieldgen.kriging.solver import Gaps, Kriging
 
-FALLBACK = {"partial_sill": 16.0, "range": 500.0, "nugget": 0.25}
-"""Covariance where too few stations speak, [kg2 m-4, km, kg2 m-4].
+
+class Expectation(NamedTuple):
+    """What a parameter is before the stations have spoken, and how far it may go.
+
+    usual : the value without any data; spread : of its logarithm; low, high : bounds
+    """
+
+    usual: float
+    spread: float
+    low: float
+    high: float
+
+
+EXPECTED = {
+    "partial_sill": Expectation(16.0, 1.5, 0.05, 400.0),
+    "range": Expectation(500.0, 1.0, 10.0, 3000.0),
+    "nugget": Expectation(0.25, 1.5, 1e-3, 16.0),
+    "slope_sill": Expectation(0.5, 1.5, 1e-4, 25.0),
+    "curvature_sill": Expectation(0.5, 1.5, 1e-4, 25.0),
+}
+"""Parameters of the covariance [kg2 m-4, km, kg2 m-4, kg2 m-4 km-2, kg2 m-4 km-4].
 
 Half the squared difference 2.5 sqrt(L) mm of delay (Emardson et al. 2003), at 0.157 kg m-2 per
-millimetre, is 2.3 at 30 km and 7.7 at 100 km; this exponential gives 2.9 and 7.5.
-"""
+millimetre, is 2.3 at 30 km and 7.7 at 100 km; the usual exponential gives 2.9 and 7.5. The
+slope's sill is a scale height that varies by 7 % over the region, the curvature's a profile that
+bends by 3.5 % in the first kilometre (common practice, no source). The
+spreads are wide: a day of thirty stations outweighs them."""
+
+AUTO = "auto"
+"""The name that stands for the model of the highest likelihood."""
 
 MINIMUM_STATIONS = 8
 """Fewer stations than this cannot tell a range from a sill."""
@@ -30,8 +55,9 @@ MINIMUM_STATIONS = 8
 HOURS_USED = 16
 """Neighbouring hours say nearly the same; this many, spread over the window, say it all."""
 
-_LOWER = {"partial_sill": 0.05, "nugget": 1e-3}
-_UPPER = {"partial_sill": 400.0, "nugget": 16.0}
+DECAY_LIMITS = (1e-4, 2e-3)
+"""Of ln PWV with height [m-1]: scale heights of 10 km and 500 m."""
+
 _RANGE_IN_SPACINGS = 1.0
 _RANGE_IN_DIAMETERS = 3.0
 
@@ -43,107 +69,143 @@ class CovarianceFit:
     covariance: Covariance
     fitted: bool
     note: str
+    log_likelihood: float = -np.inf
 
 
-def fit_covariance(values, error_variance, stations: Places, model: str) -> CovarianceFit:
+def usual_covariance(model: str, *, profile: bool = True) -> Covariance:
+    """The covariance where the stations say nothing."""
+    model = "exponential" if model == AUTO else model
+    return Covariance(model, **{name: EXPECTED[name].usual for name in _names(profile)})
+
+
+def _names(profile: bool) -> list[str]:
+    """Parameters that are fitted."""
+    return list(EXPECTED) if profile else ["partial_sill", "range", "nugget"]
+
+
+def fit_covariance(
+    values, error_variance, stations: Places, model: str, *, profile: bool = True
+) -> CovarianceFit:
     """Covariance fitted by restricted maximum likelihood, every hour with its own drift.
 
-    values, error_variance : (t, n) [kg m-2], [kg2 m-4], NaN where missing
-    stations : Places of the n stations
-    Parameters are bounded: the range lies between the median distance of nearest stations and
-    three times the network's diameter. Falls back to `FALLBACK`, and says so in `note`, where
-    fewer than eight stations report.
+    values : (t, n) [kg m-2] at the reference height, NaN where missing
+    error_variance : (n,) [kg2 m-4], each station's own
+    model : a name of `MODELS`, or `AUTO`
+    stations : Places of the n stations; what their drift explains does not count as variability
+    profile : whether the profile may differ from the hour's exponential, see `Covariance`
+
+    Each parameter has the weak expectation of `EXPECTED`, and bounds; the range lies between the
+    median distance of nearest stations and three times the network's diameter. Falls back to the
+    expectation, and says so in `note`, where fewer than eight stations report.
     """
     enough = np.isfinite(values).sum(axis=1) >= MINIMUM_STATIONS
     hours = np.flatnonzero(enough)
     if not len(hours):
-        note = f"fewer than {MINIMUM_STATIONS} stations in every hour: default covariance"
-        return CovarianceFit(Covariance(model, **FALLBACK), False, note)
+        note = f"fewer than {MINIMUM_STATIONS} stations in every hour: usual covariance"
+        return CovarianceFit(usual_covariance(model, profile=profile), False, note)
     hours = hours[np.unique(np.linspace(0, len(hours) - 1, HOURS_USED).round().astype(int))]
-    likelihood = _RestrictedLikelihood(values[hours], error_variance[hours], stations, model)
-    return likelihood.maximise()
+    fits = [
+        RestrictedLikelihood(values[hours], error_variance, stations, name, profile).maximise()
+        for name in (MODELS if model == AUTO else [model])
+    ]
+    return max(fits, key=lambda fit: fit.log_likelihood)
 
 
-class _RestrictedLikelihood:
-    """Negative restricted log likelihood of pooled hours and its gradient."""
+class RestrictedLikelihood:
+    """Negative restricted log likelihood of pooled hours, and its gradient.
 
-    def __init__(self, values, error_variance, stations, model):
+    All hours share one factorisation: an hour's gaps change the determinant by that of
+    S^-1 = P_qq and the projector by a matrix of low rank, see `fieldgen.kriging.solver`.
+    """
+
+    def __init__(self, values, error_variance, stations: Places, model: str, profile: bool):
+        self.values = values
+        self.error_variance = error_variance
+        self.stations = stations
         self.model = model
+        self.names = _names(profile)
         self.distance = distances(stations.positions, stations.positions)
-        self.hours = []
-        for hour_values, hour_variance in zip(values, error_variance, strict=True):
-            present = np.flatnonzero(np.isfinite(hour_values))
-            self.hours.append(
-                (present, hour_values[present], hour_variance[present], stations.drift[present])
-            )
-        self.bounds = self._log_bounds()
+        self.lifts = np.outer(stations.lift, stations.lift)
 
-    def _log_bounds(self):
+    def bounds(self):
+        """Lower and upper bounds (2, p) of the logarithms of the parameters."""
+        low, high = (
+            {name: getattr(EXPECTED[name], side) for name in self.names} for side in ("low", "high")
+        )
         apart = self.distance + np.diag(np.full(len(self.distance), np.inf))
-        spacing = max(np.median(apart.min(axis=1)), 1.0)
-        diameter = max(self.distance.max(), 2.0 * spacing)
-        lower = [_LOWER["partial_sill"], _RANGE_IN_SPACINGS * spacing, _LOWER["nugget"]]
-        upper = [_UPPER["partial_sill"], _RANGE_IN_DIAMETERS * diameter, _UPPER["nugget"]]
-        return np.log([lower, upper])
+        low["range"] = max(_RANGE_IN_SPACINGS * float(np.median(apart.min(axis=1))), low["range"])
+        high["range"] = max(_RANGE_IN_DIAMETERS * float(self.distance.max()), 2.0 * low["range"])
+        return np.log([list(low.values()), list(high.values())])
 
     def maximise(self) -> CovarianceFit:
         """The covariance of the highest likelihood within the bounds."""
-        lower, upper = self.bounds
-        start = np.clip(np.log(list(FALLBACK.values())), lower, upper)
+        lower, upper = self.bounds()
+        start = np.clip(np.log([EXPECTED[name].usual for name in self.names]), lower, upper)
         found = minimize(
-            self._objective,
+            self.objective,
             start,
             jac=True,
             method="L-BFGS-B",
             bounds=list(zip(lower, upper, strict=True)),
             options={"ftol": 1e-7},
         )
-        covariance = Covariance(self.model, *np.exp(found.x).tolist())
         at_bound = [
             name
-            for name, low, value, high in zip(FALLBACK, lower, found.x, upper, strict=True)
+            for name, low, value, high in zip(self.names, lower, found.x, upper, strict=True)
             if min(value - low, high - value) < 1e-6
         ]
-        note = f"{', '.join(at_bound)} at its bound" if at_bound else ""
-        return CovarianceFit(covariance, True, note)
+        note = f"{', '.join(at_bound).replace('_', ' ')} at its bound" if at_bound else ""
+        return CovarianceFit(self.covariance(found.x), True, note, -float(found.fun))
 
-    def _objective(self, log_parameters):
-        covariance = Covariance(self.model, *np.exp(log_parameters))
-        between = covariance.between(self.distance)
+    def covariance(self, log_parameters) -> Covariance:
+        """The covariance of the logarithms (p,) of the parameters."""
+        values = np.exp(log_parameters).tolist()
+        return Covariance(self.model, **dict(zip(self.names, values, strict=True)))
+
+    def objective(self, log_parameters):
+        """Value and gradient (p,) of the negative log likelihood and the expectations."""
+        covariance = self.covariance(log_parameters)
+        kriging = Kriging(covariance, self.stations, self.error_variance)
+        gaps = [kriging.gaps(np.isnan(row)) for row in self.values]
+        filled = np.stack([kriging.fill(*pair) for pair in zip(gaps, self.values, strict=True)])
+        residual = filled @ kriging.projector  # each hour's own projector times its values
+        value = 0.5 * (
+            len(gaps) * kriging.log_determinant
+            - sum(gap.log_determinant for gap in gaps)
+            + np.vdot(np.nan_to_num(self.values), residual)
+        )
+        gradient = [
+            _slope(kriging.projector, derivative, residual, gaps)
+            for derivative in self._derivatives(covariance)
+        ]
+        usual, spread = np.array([EXPECTED[name][:2] for name in self.names]).T
+        away = (log_parameters - np.log(usual)) / spread
+        return value + 0.5 * away @ away, np.array(gradient) + away / spread
+
+    def _derivatives(self, covariance: Covariance):
+        """Derivatives (n, n) of the stations' covariance by the log of each parameter."""
+        correlation = covariance.correlation(self.distance)
         step = 1e-4
         longer = covariance._replace(range=covariance.range * np.exp(step))
         shorter = covariance._replace(range=covariance.range * np.exp(-step))
-        by_log_range = (longer.between(self.distance) - shorter.between(self.distance)) / (2 * step)
-        total, gradient = 0.0, np.zeros(3)
-        for present, values, variance, drift in self.hours:
-            square = np.ix_(present, present)
-            matrix = between[square].copy()
-            derivatives = (matrix.copy(), by_log_range[square], covariance.nugget)
-            np.fill_diagonal(derivatives[0], covariance.partial_sill)
-            np.fill_diagonal(matrix, covariance.sill + variance)
-            value, slope = _hour_likelihood(matrix, values, drift, derivatives)
-            total += value
-            gradient += slope
-        return total, gradient
+        slope = longer.correlation(self.distance) - shorter.correlation(self.distance)
+        sills = covariance.partial_sill + covariance.slope_sill * self.lifts
+        derivatives = {
+            "partial_sill": covariance.partial_sill * correlation,
+            "range": sills * slope / (2.0 * step),
+            "nugget": covariance.nugget * np.eye(len(correlation)),
+            "slope_sill": covariance.slope_sill * self.lifts * correlation,
+            "curvature_sill": covariance.curvature_sill * self.lifts**2,
+        }
+        return [derivatives[name] for name in self.names]
 
 
-def _hour_likelihood(matrix, values, drift, derivatives):
-    """Negative restricted log likelihood of one hour and its slope by each log parameter."""
-    factor = cho_factor(matrix, lower=True)
-    inverse = cho_solve(factor, np.eye(len(values)))
-    solved_drift = inverse @ drift
-    information = drift.T @ solved_drift
-    projector = inverse - solved_drift @ np.linalg.solve(information, solved_drift.T)
-    residual = projector @ values
-    log_determinant = 2.0 * np.log(np.diag(factor[0])).sum()
-    value = 0.5 * (log_determinant + np.linalg.slogdet(information)[1] + values @ residual)
-    by_sill, by_range, nugget = derivatives
-    slope = [
-        np.vdot(projector, by_sill) - residual @ by_sill @ residual,
-        np.vdot(projector, by_range) - residual @ by_range @ residual,
-        nugget * (np.trace(projector) - residual @ residual),
-    ]
-    return value, 0.5 * np.array(slope)
+def _slope(projector, derivative, residual, gaps: list[Gaps]) -> float:
+    """Derivative of the negative log likelihood: half of tr(P' dA) - (P' z)' dA (P' z), summed."""
+    around = projector @ derivative @ projector
+    trace = len(gaps) * np.vdot(projector, derivative)
+    trace -= sum(np.vdot(gap.update, around[gap.changed[:, None], gap.changed]) for gap in gaps)
+    return 0.5 * float(trace - np.vdot(residual @ derivative, residual))
 
 
 @dataclass(frozen=True)
@@ -152,6 +214,32 @@ class ScaleHeight:
 
     value: float
     sigma: float
+
+    @classmethod
+    def from_decay(cls, decay: float, sigma: float) -> ScaleHeight:
+        """Scale height from the decay of ln PWV with height [m-1] and its standard error."""
+        return cls(1.0 / decay, sigma / decay**2)
+
+    @property
+    def decay(self) -> float:
+        """Decay of ln PWV with height [m-1]."""
+        return 1.0 / self.value
+
+    @property
+    def decay_sigma(self) -> float:
+        """Standard error of the decay [m-1]."""
+        return self.sigma / self.value**2
+
+    def remembering(self, last: ScaleHeight, kept: float) -> ScaleHeight:
+        """This usual value, drawn to the one of the hour before, of which `kept` (0 to 1) is kept.
+
+        The decay is a first-order autoregressive process about the usual one. The errors of
+        neighbouring hours come from the same weather, so the last hour's is taken for no smaller
+        than it would be after as many independent hours as are remembered.
+        """
+        decay = self.decay + kept * (last.decay - self.decay)
+        variance = (1.0 - kept**2) * self.decay_sigma**2 + kept**2 * last.decay_sigma**2
+        return ScaleHeight.from_decay(decay, float(np.sqrt(variance)))
 
 
 def fit_scale_height(
@@ -173,9 +261,7 @@ def fit_scale_height(
     projected_height = kriging.projector @ kriging.fill(gaps, height)
     information = mean**2 * (projected_height @ height)
     slope_information = -(mean**2) * (projected_height @ logarithm)
-    prior_information = (prior.value**2 / prior.sigma) ** 2
-    decay = (slope_information + prior_information / prior.value) / (
-        information + prior_information
-    )
-    decay = np.clip(decay, 1e-4, 2e-3)  # 500 m to 10 km
-    return ScaleHeight(1.0 / decay, 1.0 / (decay**2 * np.sqrt(information + prior_information)))
+    prior_information = prior.decay_sigma**-2
+    total = information + prior_information
+    decay = (slope_information + prior_information * prior.decay) / total
+    return ScaleHeight.from_decay(float(np.clip(decay, *DECAY_LIMITS)), float(total**-0.5))

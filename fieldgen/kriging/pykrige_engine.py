@@ -8,13 +8,12 @@ from __future__ import annotations
 
 import numpy as np
 
-from fieldgen.kriging.solver import Gaps, Kriging, Places
+from fieldgen.kriging.places import Places
+from fieldgen.kriging.solver import Kriging
 
 
-def krige_hours_with_pykrige(
-    kriging: Kriging, targets: Places, values, gaps: list[Gaps], dtype=np.float32
-):
-    """Field and kriging variance (t, m), as `solver.krige_hours` gives them."""
+def krige_with_pykrige(kriging: Kriging, targets: Places, values, dtype=np.float32):
+    """Field and kriging variance (t, m) of values (t, n), NaN where missing."""
     solved = [_krige_hour(kriging, targets, row) for row in values]
     field, variance = (np.stack(part).astype(dtype) for part in zip(*solved, strict=True))
     return field, variance

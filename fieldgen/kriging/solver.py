@@ -2,9 +2,12 @@
 
 The stations' covariance matrix A holds the field's covariance plus each station's own error
 variance on its diagonal; the targets are free of noise, so stations at one place are no problem.
-With the drift functions F (n, k) everything follows from the projector
+With the drift functions F (n, k) and G = (F' A^-1 F)^-1 everything follows from the projector
 
-    P = A^-1 - A^-1 F (F' A^-1 F)^-1 F' A^-1.
+    P = A^-1 - A^-1 F G F' A^-1.
+
+Weights. For a target with covariances c and drift functions f, w = P c + A^-1 F G f, and the
+variance is C(0) + f' G f - c' (w + A^-1 F G f).
 
 Gaps. A station that is missing, or whose error variance is larger in one hour than in the others
 by `excess`, changes A by a diagonal of low rank. With q the stations concerned and
@@ -23,54 +26,12 @@ Leaving out. The residual of leaving station i out is (P z)_i / P_ii, its varian
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import NamedTuple
 
 import numpy as np
 from scipy.linalg import cho_factor, cho_solve
 
-from fieldgen.kriging.covariance import Covariance, chord_positions, distances
-
-
-class Places(NamedTuple):
-    """Where something is: positions (n, 3) [km] and drift functions (n, k), the first constant."""
-
-    positions: np.ndarray
-    drift: np.ndarray
-
-
-class PlaceMaker:
-    """Places from coordinates, with the drift functions of one region.
-
-    The linear drift runs along east and north of the tangent plane at the stations' middle, in
-    units of their spread, so that all functions are of order one. Stations on a line (narrower than
-    2 % of its length) do not determine a plane: the drift falls back to constant.
-    """
-
-    def __init__(self, longitude, latitude, drift: str = "constant"):
-        positions = chord_positions(longitude, latitude)
-        self._origin = positions.mean(axis=0)
-        self._spread = max(np.ptp(positions, axis=0).max(), 1.0)
-        self._axes = _tangent_axes(self._origin)
-        plane = (positions - self._origin) @ self._axes / self._spread
-        spans_plane = np.linalg.svd(plane - plane.mean(axis=0), compute_uv=False).min() > 0.02
-        self.drift = drift if spans_plane else "constant"
-
-    def places(self, longitude, latitude) -> Places:
-        """Places of coordinates (n,) [degrees]."""
-        positions = chord_positions(longitude, latitude)
-        functions = np.ones((len(positions), 1))
-        if self.drift == "linear":
-            plane = (positions - self._origin) @ self._axes / self._spread
-            functions = np.hstack([functions, plane])
-        return Places(positions, functions)
-
-
-def _tangent_axes(origin):
-    """Unit vectors (3, 2) to the east and north of a position."""
-    up = origin / np.linalg.norm(origin)
-    east = np.cross([0.0, 0.0, 1.0], up)
-    east /= np.linalg.norm(east)
-    return np.stack([east, np.cross(up, east)], axis=1)
+from fieldgen.kriging.covariance import Covariance, distances
+from fieldgen.kriging.places import Places
 
 
 @dataclass(frozen=True)
@@ -78,11 +39,11 @@ class Weights:
     """Kriging weights of targets from the full set of stations.
 
     values : (n, m), a row for each station, so that a missing station's row is contiguous
-    variance : (m,) kriging variance with every station present
+    variance : (m,) kriging variance with every station present, or None
     """
 
     values: np.ndarray
-    variance: np.ndarray
+    variance: np.ndarray | None
 
 
 @dataclass(frozen=True)
@@ -90,11 +51,17 @@ class Gaps:
     """How one hour's stations differ from the full set.
 
     changed : (g,) indices of the stations missing or with excess variance
-    update : (g, g) matrix S of the module's text
+    update : (g, g) matrix S of the module's text, root: its lower Cholesky factor
     """
 
     changed: np.ndarray
     update: np.ndarray
+    root: np.ndarray
+
+    @property
+    def log_determinant(self) -> float:
+        """Logarithm of the determinant of S."""
+        return 2.0 * float(np.log(np.diag(self.root)).sum())
 
 
 class Kriging:
@@ -107,37 +74,50 @@ class Kriging:
     def __init__(self, covariance: Covariance, stations: Places, error_variance):
         self.covariance = covariance
         self.stations = stations
-        self.error_variance = np.asarray(error_variance)
-        between = covariance.between(distances(stations.positions, stations.positions))
-        np.fill_diagonal(between, covariance.sill + self.error_variance)
-        self._factor = cho_factor(between, lower=True)
-        drift = stations.drift
-        self._solved_drift = cho_solve(self._factor, drift)  # A^-1 F
-        self._drift_covariance = np.linalg.inv(drift.T @ self._solved_drift)
-        inverse = cho_solve(self._factor, np.eye(len(drift)))
-        self.projector = (
-            inverse - self._solved_drift @ self._drift_covariance @ self._solved_drift.T
-        )
+        self.error_variance = np.asarray(error_variance, dtype=float)
+        apart = distances(stations.positions, stations.positions)
+        matrix = covariance.between(apart, stations.lift, stations.lift)
+        np.fill_diagonal(matrix, covariance.at(stations.lift) + self.error_variance)
+        self._solve(matrix)
 
-    def weights(self, targets: Places, dtype=np.float32) -> Weights:
-        """Weights and variance of m targets with every station present."""
-        to_targets = self.covariance.between(distances(self.stations.positions, targets.positions))
-        solved = cho_solve(self._factor, to_targets)
-        remainder = targets.drift.T - self._solved_drift.T @ to_targets
-        multipliers = self._drift_covariance @ remainder
-        variance = self.covariance.sill - np.einsum("ij,ij->j", to_targets, solved)
-        variance += np.einsum("ij,ij->j", remainder, multipliers)
-        solved += self._solved_drift @ multipliers
-        return Weights(solved.astype(dtype), variance.astype(dtype))
+    def _solve(self, matrix) -> None:
+        factor = cho_factor(matrix, lower=True, check_finite=False)
+        drift = self.stations.drift
+        inverse = cho_solve(factor, np.eye(len(drift)), check_finite=False)
+        solved_drift = inverse @ drift
+        information = drift.T @ solved_drift
+        self.drift_covariance = np.linalg.inv(information)  # G
+        self.drift_weights = solved_drift @ self.drift_covariance  # A^-1 F G
+        self.projector = inverse - self.drift_weights @ solved_drift.T
+        self.log_determinant = 2.0 * float(np.log(np.diag(factor[0])).sum())
+        self.log_determinant += float(np.linalg.slogdet(information)[1])
+
+    def weights(self, targets: Places, dtype=np.float32, distance=None) -> Weights:
+        """Weights and variance of m targets with every station present.
+
+        distance : (n, m) [km] from the stations to the targets, if it is known already
+        """
+        if distance is None:
+            distance = distances(self.stations.positions, targets.positions).astype(dtype)
+        to_targets = self.covariance.between(distance, self.stations.lift, targets.lift)
+        by_drift = (self.drift_weights @ targets.drift.T).astype(dtype)
+        weights = self.projector.astype(dtype) @ to_targets
+        weights += by_drift
+        trend = np.einsum("mi,ij,mj->m", targets.drift, self.drift_covariance, targets.drift)
+        by_drift += weights
+        explained = np.einsum("nm,nm->m", to_targets, by_drift)
+        variance = self.covariance.at(targets.lift) + trend - explained
+        return Weights(weights, np.maximum(variance, 0.0).astype(dtype))
 
     def gaps(self, missing, excess=None) -> Gaps:
         """Gaps of an hour: missing (n,) bool; excess (n,) error variance beyond the usual, >= 0."""
         excess = np.zeros(len(missing)) if excess is None else excess
         changed = np.flatnonzero(missing | (excess > 0))
-        block = self.projector[np.ix_(changed, changed)]
-        larger = ~missing[changed]
+        block = self.projector[changed[:, None], changed]
+        larger = np.flatnonzero(~missing[changed])
         block[larger, larger] += 1.0 / excess[changed[larger]]
-        return Gaps(changed, np.linalg.inv(block))
+        update = np.linalg.inv(block)
+        return Gaps(changed, update, np.linalg.cholesky(update))
 
     def fill(self, gaps: Gaps, values):
         """Values (n,) or (n, k) after the gap identity, which suit the full set of stations.
@@ -151,8 +131,7 @@ class Kriging:
 
     def diagonal(self, gaps: Gaps):
         """Diagonal (n,) of the hour's own projector; about zero where a station is missing."""
-        root = np.linalg.cholesky(gaps.update)
-        lost = root.T @ self.projector[gaps.changed]
+        lost = gaps.root.T @ self.projector[gaps.changed]
         return np.diag(self.projector) - np.einsum("ij,ij->j", lost, lost)
 
     def leave_one_out(self, values, gaps: Gaps):
@@ -179,6 +158,5 @@ def hour_variance(weights: Weights, gaps: Gaps):
     """Kriging variance (m,) of one hour's stations."""
     if not len(gaps.changed):
         return weights.variance
-    root = np.linalg.cholesky(gaps.update).astype(weights.values.dtype)
-    lost = root.T @ weights.values[gaps.changed]
+    lost = gaps.root.T.astype(weights.values.dtype) @ weights.values[gaps.changed]
     return weights.variance + np.einsum("ij,ij->j", lost, lost)

@@ -14,11 +14,11 @@ from fieldgen.products.metadata import (
     global_attributes,
     time_coordinates,
 )
-from fieldgen.quantities import QUANTITIES
+from fieldgen.quantities import MISSING, PACKED_STEP, QUANTITIES
 from fieldgen.settings import NetworkTable
 
-PACKED = {"dtype": "int16", "scale_factor": 0.01, "_FillValue": np.int16(-32768)}
-"""Water vapour in steps of 0.01 kg m-2, a hundredth of what the best user asks for."""
+PACKED = {"scale_factor": np.float32(PACKED_STEP), "_FillValue": np.int16(MISSING)}
+"""How packed water vapour is to be read."""
 
 COMPRESSION = {"zlib": True, "complevel": 1, "shuffle": True}
 
@@ -29,7 +29,7 @@ _SUMMARY = (
 )
 
 
-def field_dataset(
+def packed_dataset(
     *,
     grid: Grid,
     terrain_height,
@@ -40,20 +40,20 @@ def field_dataset(
     reference_height,
     processing,
 ) -> xr.Dataset:
-    """Dataset of fields with all CF attributes; dimensions time, y, x.
+    """Dataset of packed fields with all CF attributes; dimensions time, y, x.
 
-    terrain_height (ny, nx) [m]; time (t,) datetime64; fields: pwv, sigma, at_reference, flag
-    (t, ny, nx), scale_height, station_count (t,); processing: text that says how it was made
+    terrain_height (ny, nx) [m]; time (t,) datetime64; fields: packed pwv, sigma, at_reference, and
+    flag (t, ny, nx), scale_height, station_count (t,); processing: text that says how it was made
     """
     space = ("time", "y", "x")
     dataset = xr.Dataset(
         {
             "pwv": (space, fields.pwv, _pwv_attributes()),
-            "pwv_sigma": (space, fields.sigma, QUANTITIES["pwv_sigma"].attributes()),
+            "pwv_sigma": (space, fields.sigma, QUANTITIES["pwv_sigma"].attributes() | PACKED),
             "pwv_at_reference": (
                 space, fields.at_reference, _reference_attributes(reference_height)
             ),
-            "flag": (space, fields.flag.astype(np.int8), _flag_attributes(flag_bits)),
+            "flag": (space, fields.flag, _flag_attributes(flag_bits)),
             "terrain": (("y", "x"), terrain_height, _terrain_attributes()),
             "scale_height": ("time", fields.scale_height, QUANTITIES["scale_height"].attributes()),
             "station_count": (
@@ -78,28 +78,41 @@ def field_dataset(
     return dataset
 
 
+def unpack_fields(dataset: xr.Dataset) -> xr.Dataset:
+    """The same with water vapour as numbers [kg m-2], NaN where missing, as from an opened file."""
+    return xr.decode_cf(dataset, decode_times=False)
+
+
 def write_fields(dataset: xr.Dataset, path: Path) -> None:
-    """Write a dataset of `field_dataset`, packed and compressed, whole or not at all."""
+    """Write a dataset of `packed_dataset`, compressed, whole or not at all."""
     with whole_file(path) as temporary:
         dataset.to_netcdf(temporary, engine="netcdf4")
 
 
 def _pwv_attributes() -> dict:
-    return QUANTITIES["pwv"].attributes() | {
-        "ancillary_variables": "pwv_sigma flag",
-        "cell_methods": "time: mean area: mean",
-        "comment": "1 kg m-2 is 1 mm of liquid water.",
-    }
+    return (
+        QUANTITIES["pwv"].attributes()
+        | PACKED
+        | {
+            "ancillary_variables": "pwv_sigma flag",
+            "cell_methods": "time: mean area: mean",
+            "comment": "1 kg m-2 is 1 mm of liquid water.",
+        }
+    )
 
 
 def _reference_attributes(reference_height: float) -> dict:
     quantity = QUANTITIES["pwv_at_reference"]
-    return quantity.attributes() | {
-        "cell_methods": "time: mean",
-        "reference_height": float(reference_height),
-        "comment": f"Above {reference_height:g} m everywhere, where moist and dry air masses show "
-        "without the mountains' imprint.",
-    }
+    return (
+        quantity.attributes()
+        | PACKED
+        | {
+            "cell_methods": "time: mean",
+            "reference_height": float(reference_height),
+            "comment": f"Above {reference_height:g} m everywhere: moist and dry air masses show "
+            "without the mountains' imprint.",
+        }
+    )
 
 
 def _flag_attributes(bits: dict[str, int]) -> dict:
@@ -157,9 +170,8 @@ def _geographic_bounds(grid: Grid):
 
 def _set_encoding(dataset: xr.Dataset) -> None:
     chunks = {"chunksizes": (1, dataset.sizes["y"], dataset.sizes["x"])}
-    for name in ("pwv", "pwv_sigma", "pwv_at_reference"):
-        dataset[name].encoding = {**PACKED, **COMPRESSION, **chunks}
-    dataset["flag"].encoding = {**COMPRESSION, **chunks}
+    for name in ("pwv", "pwv_sigma", "pwv_at_reference", "flag"):
+        dataset[name].encoding = {**COMPRESSION, **chunks}
     dataset["terrain"].encoding = {"dtype": "float32", "_FillValue": None, **COMPRESSION}
     dataset["scale_height"].encoding = {"dtype": "float32", "_FillValue": np.float32(-9999.0)}
     dataset["station_count"].encoding = {"dtype": "int16", "_FillValue": None}

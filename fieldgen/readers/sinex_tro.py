@@ -60,6 +60,9 @@ KEYWORDS = {
 
 TIME_SYSTEMS = ("G", "GPS", "GPST", "U", "UTC", "UT")
 
+OUTSIDE = ""
+"""The block of lines that stand in none; a block that is passed over is None."""
+
 COMMENT, CONTROL, BLOCK_START, BLOCK_END = b"*%+-"
 
 
@@ -110,7 +113,7 @@ class _Reading:
     created: np.datetime64 = NO_TIME
     begun: bool = False
     ended: bool = False
-    block: str | None = None
+    block: str | None = OUTSIDE
     blocks_seen: dict[str, str | None] = field(default_factory=dict)
     declared: dict[str, list[str]] = field(default_factory=dict)
     headings: list[str] = field(default_factory=list)
@@ -156,16 +159,16 @@ class _Reading:
         if letter == BLOCK_START:
             self._open_block(line)
         else:
-            self.block = None
+            self.block = OUTSIDE
 
     def _take_header_or_trailer(self, line: str) -> None:
         if is_sinex_tro(line):
             self.begun = True
             self.created = _created(line)
-            self.block = None
+            self.block = OUTSIDE
         elif "END" in line.upper():
             self.ended = True
-            self.block = None
+            self.block = OUTSIDE
 
     def _check_begun(self, line: str) -> None:
         if not self.begun:
@@ -194,6 +197,13 @@ class _Reading:
                 self._take_description(words.line(index))
         elif self.block in SITE_PARSERS:
             self._take_sites(words, lines)
+        elif self.block == OUTSIDE:
+            self.rejections.add_each(
+                self.file,
+                words.line_number(lines),
+                "outside any block",
+                lambda index: f"line begins {words.line(lines[index]).strip()[:40]!r}",
+            )
 
     def _take_description(self, line: str) -> None:
         text = " ".join(line.split())

@@ -53,17 +53,19 @@ def conversion_factor(mean_temperature, refractivity: Refractivity):
     return WATER_DENSITY.value * dimensionless
 
 
-def water_vapour_sigma(
-    factor, water_vapour, ztd_sigma, pressure_sigma, mean_temperature_relative_sigma
-):
-    """Standard error of a station's water vapour [kg m-2].
+def independent_sigma(factor, ztd_sigma, pressure_sigma):
+    """Standard error of a station's water vapour [kg m-2] that its neighbours do not share.
 
-    factor [kg m-2 per m], water_vapour [kg m-2], ztd_sigma [m], pressure_sigma [hPa],
-    mean_temperature_relative_sigma: sigma of Tm as a fraction of Tm, which is the same fraction
-    of Pi to better than 6 %. Ning et al. (2016), eq. 6, without the constants, which are common
-    to all stations.
+    factor [kg m-2 per m], ztd_sigma [m], pressure_sigma [hPa]. Ning et al. (2016), eq. 6, without
+    the constants and Tm, see `common_sigma`.
     """
-    delay_variance = ztd_sigma**2 + (ZHD_PER_HECTOPASCAL.value * pressure_sigma) ** 2
-    return np.sqrt(
-        factor**2 * delay_variance + (water_vapour * mean_temperature_relative_sigma) ** 2
-    )
+    return factor * np.hypot(ztd_sigma, ZHD_PER_HECTOPASCAL.value * pressure_sigma)
+
+
+def common_sigma(water_vapour, constant, relative):
+    """Standard error of water vapour [kg m-2] that all stations share, so it does not average out.
+
+    constant [kg m-2]: of the constants and the satellites' orbits; relative: of Tm, as a fraction,
+    which is the same fraction of Pi to better than 6 %. Tm follows the air mass, not the station.
+    """
+    return np.hypot(constant, relative * np.asarray(water_vapour))

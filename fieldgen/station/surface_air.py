@@ -12,7 +12,8 @@ import numpy as np
 
 from fieldgen.constants import GAS_CONSTANT_DRY_AIR, GRAVITY, STANDARD_LAPSE_RATE
 from fieldgen.kriging.covariance import Covariance, chord_positions, distances
-from fieldgen.kriging.solver import Kriging, PlaceMaker, krige_hours
+from fieldgen.kriging.places import PlaceMaker
+from fieldgen.kriging.solver import Kriging, krige_hours
 from fieldgen.station.heights import layer_mean, pressure_at_height, virtual_temperature
 
 PRESSURE_SOURCES = {"none": 0, "own": 1, "neighbours": 2}

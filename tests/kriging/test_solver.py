@@ -4,8 +4,9 @@ import numpy as np
 import pytest
 
 from fieldgen.kriging.covariance import Covariance
-from fieldgen.kriging.pykrige_engine import krige_hours_with_pykrige
-from fieldgen.kriging.solver import Kriging, PlaceMaker, Places, krige_hours
+from fieldgen.kriging.pykrige_engine import krige_with_pykrige
+from fieldgen.kriging.places import PlaceMaker
+from fieldgen.kriging.solver import Kriging, krige_hours
 
 COVARIANCE = Covariance("exponential", 9.0, 150.0, 0.4)
 
@@ -98,7 +99,7 @@ def test_leave_one_out_equals_removing_the_station(drift):
     for index in (0, 5, 29):
         without = values.copy()
         without[index] = np.nan
-        here = Places(stations.positions[[index]], stations.drift[[index]])
+        here = stations[[index]]
         field, variance = krige_anew(COVARIANCE, stations, error_variance, here, without)
         assert residual[index] == pytest.approx(values[index] - field[0], abs=1e-9)
         assert sigma[index] ** 2 == pytest.approx(variance[0] + error_variance[index], abs=1e-9)
@@ -113,7 +114,7 @@ def test_pykrige_engine_agrees_with_equal_error_variances(drift):
     kriging = Kriging(COVARIANCE, stations, np.full(30, 0.5))
     gaps = [kriging.gaps(np.isnan(row)) for row in values]
     ours = krige_hours(kriging, targets, values, gaps, np.float64)
-    theirs = krige_hours_with_pykrige(kriging, targets, values, gaps, np.float64)
+    theirs = krige_with_pykrige(kriging, targets, values, np.float64)
     np.testing.assert_allclose(ours[0], theirs[0], atol=1e-6)
     np.testing.assert_allclose(ours[1], theirs[1], atol=1e-6)
 

@@ -135,6 +135,35 @@ def test_read_sinex_tro_uses_a_file_cut_in_a_line(tmp_path):
     assert "cut short" in records.warnings[0]
 
 
+def test_read_sinex_tro_counts_lines_outside_any_block(tmp_path):
+    stray = " ARDA00ATL 2030:031:07200 2401.5   1.3   0.25  0.11\n"
+    records = read(tmp_path, replace(SinexFile(), solution=SinexFile().solution + stray))
+    assert len(records.ztd) == 4
+    assert counts(records) == {"outside any block": 1}
+    assert records.rejections.examples[0].line == 21
+
+
+def test_read_sinex_tro_passes_over_other_blocks(tmp_path):
+    other = block("SITE/ANTENNA", " ARDA00ATL  A 1 P 2030:031:00000 invented antenna")
+    assert read(tmp_path, replace(SinexFile(), coordinates=other)).rejections.total == 0
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "warning"),
+    [
+        ("SYSTEM                   G", "SYSTEM  LOCAL", "time system is LOCAL, expected G or UTC"),
+        ("1e+03 1e+03 1e+03 1e+03", "1e+03 1e+03", "TROP/DESCRIPTION has 2 units, expected 4"),
+    ],
+    ids=["time system", "units"],
+)
+def test_read_sinex_tro_warns_of_the_description(tmp_path, old, new, warning):
+    assert old in SinexFile().description
+    sinex = replace(SinexFile(), description=SinexFile().description.replace(old, new))
+    records = read(tmp_path, sinex)
+    np.testing.assert_allclose(records.ztd_sigma * 1e3, [1.3, 1.4, 1.5, 1.6], rtol=1e-12)
+    assert warning in records.warnings[0]
+
+
 def test_read_sinex_tro_does_not_read_water_vapour(tmp_path):
     sinex = replace(
         SinexFile(),
@@ -377,12 +406,11 @@ def test_read_sinex_tro_takes_points_of_one_place_as_one_station(tmp_path):
 
 def test_read_sinex_tro_takes_the_only_point_of_each_block_as_the_same(tmp_path):
     """Blocks may call the only point of a station differently."""
-    sinex = replace(
-        SinexFile(), coordinates=block("SITE/COORDINATES", xyz_line("ARDA00ATL", point="1"))
-    )
-    site = read(tmp_path, sinex).sites["ARDA00ATL"]
-    assert site.longitude == pytest.approx(-27.8112, abs=2e-8) and site.longitude != -27.8112
-    assert site.msl_height == 61.5
+    line = xyz_line("ARDA00ATL", point="1", key="BELU")
+    records = read(tmp_path, replace(SinexFile(), coordinates=block("SITE/COORDINATES", line)))
+    site = records.sites["ARDA00ATL"]
+    assert site.latitude == pytest.approx(-47.7391, abs=2e-8) and site.msl_height == 61.5
+    assert "X, Y, Z are used" in records.warnings[0]
 
 
 def test_read_sinex_tro_warns_where_one_point_is_in_two_places(tmp_path):

@@ -3,7 +3,8 @@
 import numpy as np
 
 from fieldgen.kriging.covariance import Covariance
-from fieldgen.kriging.solver import Kriging, PlaceMaker
+from fieldgen.kriging.places import PlaceMaker
+from fieldgen.kriging.solver import Kriging
 from fieldgen.station.screening import (
     biased_station,
     disagreements,

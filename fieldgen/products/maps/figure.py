@@ -1,0 +1,38 @@
+"""A clear figure with the axes of a map, and words at places on it."""
+
+from __future__ import annotations
+
+import matplotlib.style
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.figure import Figure
+from matplotlib.text import Text
+from matplotlib.transforms import IdentityTransform
+
+from fieldgen.products import look
+from fieldgen.products.maps.grid import MapGrid
+from fieldgen.products.maps.layout import DOTS_PER_INCH, Layout
+
+
+def drawing_style():
+    """Context with matplotlib's own defaults and our letters, whatever the user's settings."""
+    return matplotlib.style.context(["default", {"font.family": look.FONT_FAMILY}])
+
+
+def make_figure(layout: Layout, grid: MapGrid):
+    """A clear figure and the axes of its map, which fill the map box to the pixel."""
+    width, height = layout.size
+    inches = width / DOTS_PER_INCH, height / DOTS_PER_INCH
+    figure = Figure(inches, DOTS_PER_INCH, facecolor="none")
+    FigureCanvasAgg(figure)
+    axes = figure.add_axes(layout.fractions(layout.map_box), projection=grid.projection)
+    axes.patch.set_visible(False)
+    axes.set_extent(grid.extent, crs=grid.projection)
+    axes.set_aspect("auto")
+    return figure, axes
+
+
+def draw_words(figure: Figure, place, words: str, size: float = look.TEXT_SIZE, **style) -> Text:
+    """Words at a place [pixels] of the picture, every character as it is."""
+    return figure.text(
+        *place, words, size=size, transform=IdentityTransform(), parse_math=False, **style
+    )
