@@ -172,19 +172,22 @@ def _make_window(settings: Settings, stations: xr.Dataset, places: Places, rows:
 def _model_window(settings: Settings, window: Window):
     """Model of a window, its disagreements (t, n) bool and condemned stations (n,) bool."""
     present = np.isfinite(window.pwv)
-    trusted = present
+    trusted, model = present, None
     for _ in range(ROUNDS):
-        model = _fit_model(settings, window, trusted)
+        model = _fit_model(settings, window, trusted, model)
         disagree, out = _screen(settings.screening, window, model)
         good = present & ~disagree & ~out
         if (good == trusted).all():
             return model, disagree, out
         trusted = good
-    return _fit_model(settings, window, trusted), disagree, out
+    return _fit_model(settings, window, trusted, model), disagree, out
 
 
-def _fit_model(settings: Settings, window: Window, trusted) -> Model:
-    """Covariance, then the scale heights of that covariance, then the values they reduce to."""
+def _fit_model(settings: Settings, window: Window, trusted, last: Model | None) -> Model:
+    """Covariance, then the scale heights of that covariance, then the values they reduce to.
+
+    last : the model of the round before, where this one's search starts
+    """
     prior = np.full(len(window.pwv), settings.heights.prior)
     values, variance = window.at_reference(prior)
     values = np.where(trusted, values, np.nan)
@@ -195,6 +198,7 @@ def _fit_model(settings: Settings, window: Window, trusted) -> Model:
         values / moisture[:, None],
         usual * np.mean(moisture**-2.0),
         window.places,
+        last and last.fit.covariance,
     )
     kriging = Kriging(fit.covariance, window.places, usual)
     scale, sigma = _fit_scale_heights(settings, window, kriging, values)
@@ -208,7 +212,9 @@ def _fit_model(settings: Settings, window: Window, trusted) -> Model:
     return Model(fit, kriging, scale, sigma, values, excess, factor, gaps)
 
 
-def _fit_covariance(table: KrigingTable, values, usual_variance, places: Places) -> CovarianceFit:
+def _fit_covariance(
+    table: KrigingTable, values, usual_variance, places: Places, near: Covariance | None
+) -> CovarianceFit:
     if table.partial_sill is not None:
         fixed = Covariance(
             table.covariance,
@@ -222,7 +228,9 @@ def _fit_covariance(table: KrigingTable, values, usual_variance, places: Places)
     if np.ptp(places.lift) > 0.0:  # each hour's scale height is not variability of the field
         places = places._replace(drift=np.column_stack([places.drift, places.lift]))
     profile = table.engine != "pykrige"  # its covariances depend on distance alone
-    return fit_covariance(values, usual_variance, places, table.covariance, profile=profile)
+    return fit_covariance(
+        values, usual_variance, places, table.covariance, profile=profile, near=near
+    )
 
 
 def _usual(variance):

@@ -45,6 +45,8 @@ def _make_parser() -> argparse.ArgumentParser:
     commands = parser.add_subparsers(title="commands", required=True, metavar="COMMAND")
     _add_make(commands)
     _add_check(commands)
+    _add_score(commands)
+    _add_compare(commands)
     return parser
 
 
@@ -67,19 +69,15 @@ def _add_command(commands, name: str, help_text: str, example: str, run) -> argp
         description=f"{help_text[0].upper()}{help_text[1:]}.",
         epilog=f"example: {example}",
     )
-    parser.add_argument("network", metavar="NETWORK.toml", type=Path, help="the settings file")
     parser.set_defaults(run=run)
     return parser
 
 
-def _add_make(commands) -> None:
-    parser = _add_command(
-        commands,
-        "make",
-        "make the fields, station files and maps of a period",
-        "fieldgen make demo_network/network.toml --start 2026-09-09T12:00 --end 2026-09-09T18:00",
-        _make,
-    )
+def _add_network(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument("network", metavar="NETWORK.toml", type=Path, help="the settings file")
+
+
+def _add_period_and_folder(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("--start", metavar="T", help="first instant, ISO 8601 in UTC")
     parser.add_argument("--end", metavar="T", help="last instant; default: all hours of the input")
     parser.add_argument(
@@ -91,13 +89,57 @@ def _add_make(commands) -> None:
     )  # fmt: skip
 
 
+def _add_make(commands) -> None:
+    parser = _add_command(
+        commands,
+        "make",
+        "make the fields, station files and maps of a period",
+        "fieldgen make demo_network/network.toml --start 2026-09-09T12:00 --end 2026-09-09T18:00",
+        _make,
+    )
+    _add_network(parser)
+    _add_period_and_folder(parser)
+
+
 def _add_check(commands) -> None:
-    _add_command(
+    parser = _add_command(
         commands,
         "check",
         "read and check everything and print what would be used, writing nothing",
         "fieldgen check demo_network/network.toml",
         _check,
+    )
+    _add_network(parser)
+
+
+def _add_score(commands) -> None:
+    parser = _add_command(
+        commands,
+        "score",
+        "leave out each station, and each with its neighbours, and tell how well the rest predicts",
+        "fieldgen score demo_network/network.toml --start 2026-09-08 --end 2026-09-10",
+        _score,
+    )
+    _add_network(parser)
+    _add_period_and_folder(parser)
+
+
+def _add_compare(commands) -> None:
+    parser = _add_command(
+        commands,
+        "compare",
+        "compare field files with independent water vapour or soundings",
+        "fieldgen compare outputs/*/fields/pwv_*.nc --with observations.csv",
+        _compare,
+    )
+    parser.add_argument("fields", metavar="FIELDS", type=Path, nargs="+", help="pwv_YYYYMMDD.nc")
+    parser.add_argument(
+        "--with", dest="observations", metavar="TABLE.csv", type=Path, required=True,
+        help="columns time, longitude, latitude, height, value, sigma, or a sounding's pressure, "
+        "temperature, dewpoint or relative_humidity, height",
+    )  # fmt: skip
+    parser.add_argument(
+        "--out", metavar="FOLDER", type=Path, help="write compare.json and compare.csv there"
     )
 
 
@@ -115,8 +157,7 @@ def _make(options: argparse.Namespace) -> int:
 
     with Progress() as progress:
         network = _read(options.network, progress)
-        folder = options.out or Path("outputs") / folder_name(network.settings.network.name)
-        _check_writable(folder)
+        folder = _product_folder(options, network)
         run = make(
             network,
             folder,
@@ -139,6 +180,54 @@ def _check(options: argparse.Namespace) -> int:
         stations = retrieve_water_vapour(network)
     print(format_check(network, stations))
     return 0
+
+
+def _score(options: argparse.Namespace) -> int:
+    from fieldgen.progress import Progress
+    from fieldgen.scoring.files import write_score
+    from fieldgen.scoring.picture import write_picture
+    from fieldgen.scoring.report import report_score
+    from fieldgen.scoring.summary import format_score
+    from fieldgen.scoring.trials import score_network
+
+    with Progress() as progress:
+        network = _read(options.network, progress)
+        folder = _product_folder(options, network) / "score"
+        score = score_network(
+            network,
+            options.start,
+            options.end,
+            jobs=options.jobs,
+            progress=progress.made,
+        )
+        report = report_score(network, score)
+        paths = write_score(report, folder)
+        write_picture(report, folder / "score.png")
+    print(format_score(report))
+    print(f"{len(paths) + 1} files written to {folder}")
+    return 0
+
+
+def _compare(options: argparse.Namespace) -> int:
+    from fieldgen.comparing.comparison import compare
+    from fieldgen.comparing.files import write_comparison
+    from fieldgen.comparing.summary import format_comparison
+
+    if options.out is not None:
+        _check_writable(options.out)
+    comparison = compare(options.fields, options.observations)
+    print(format_comparison(comparison))
+    if options.out is not None:
+        paths = write_comparison(comparison, options.out)
+        print(f"{len(paths)} files written to {options.out}")
+    return 0
+
+
+def _product_folder(options: argparse.Namespace, network) -> Path:
+    """The folder of a network's products, found writable."""
+    folder = options.out or Path("outputs") / folder_name(network.settings.network.name)
+    _check_writable(folder)
+    return folder
 
 
 def _read(path: Path, progress):

@@ -15,6 +15,7 @@ from fieldgen.analysis import Day, analyse_day, locate, reference_height
 from fieldgen.constants import REFRACTIVITY
 from fieldgen.fields import FIELD_FLAGS, CellMaker, Fields, make_fields_of_day
 from fieldgen.kriging.places import PlaceMaker, Places
+from fieldgen.memory import keep_freed_memory
 from fieldgen.period import Piece
 from fieldgen.products.field_file import packed_dataset, unpack_fields, write_fields
 from fieldgen.products.station_file import station_dataset, write_stations
@@ -54,6 +55,7 @@ class DayMaker:
     def compute(self, piece: Piece) -> tuple[Day, Fields]:
         """Model and fields of a day."""
         settings = self.network.settings
+        keep_freed_memory()
         with threadpool_limits(1):  # results must not depend on how BLAS splits its sums
             day = analyse_day(settings, self.stations, self._places[1], piece.first, piece.last)
             return day, make_fields_of_day(settings, self._cells, day)

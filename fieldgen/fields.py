@@ -36,8 +36,8 @@ UNUSABLE_SIGMA = 5.0
 HEIGHT_TOLERANCE = 50.0
 """Terrain this far [m] beyond the highest or lowest station of the hour is extrapolated."""
 
-CELLS_AT_ONCE = 100_000
-"""Cells whose weights are held in memory together."""
+CELLS_AT_ONCE = 4096
+"""Cells whose weights are held together: few enough for the processor's cache."""
 
 KEPT_DISTANCES = 40_000_000
 """Distances between stations and cells that are kept from day to day, 4 bytes each."""
@@ -50,6 +50,7 @@ class Fields:
     pwv, sigma, at_reference : (t, ny, nx) int16, steps of 0.01 kg m-2, `MISSING` where missing
     flag : (t, ny, nx) int8, bits of `FIELD_FLAGS`
     scale_height : (t,) [m], NaN where missing; station_count : (t,)
+    common_sigma, common_relative_sigma : (t,) [kg m-2], [1] what the cells' errors share
     clipped : cells and hours below zero, written as zero
     """
 
@@ -59,6 +60,8 @@ class Fields:
     flag: np.ndarray
     scale_height: np.ndarray
     station_count: np.ndarray
+    common_sigma: np.ndarray
+    common_relative_sigma: np.ndarray
     clipped: int = 0
 
 
@@ -137,18 +140,15 @@ class Solution:
 def _solve(window: Window, model: Model, hours, cells: Cells) -> Solution:
     """Solution of the default engine: one set of weights for all hours."""
     kriging, gaps = model.kriging, [model.gaps[hour] for hour in hours]
-    distance = cells.distance[window.index]
-    filled = np.stack(
-        [kriging.fill(*pair) for pair in zip(gaps, model.values[hours], strict=True)]
-    ).astype(np.float32)
-    weights = kriging.weights(cells.places, distance=distance)
-    lifted = level = filled @ weights.values
-    if kriging.covariance.slope_sill or kriging.covariance.curvature_sill:
-        flat = cells.places._replace(lift=np.zeros(len(cells.ground)))
-        level = filled @ kriging.weights(flat, distance=distance).values
+    filled = np.stack([kriging.fill(*pair) for pair in zip(gaps, model.values[hours], strict=True)])
+    correlation = kriging.covariance.correlation(cells.distance[window.index])
+    lift, targets = kriging.stations.lift, cells.places
+    lifted = kriging.covariance.of_correlation(correlation, lift, targets.lift)
+    weights = kriging.weights_of_covariances(lifted, targets)
+    level = kriging.covariance.of_correlation(correlation, lift, np.zeros_like(targets.lift))
     return Solution(
-        lifted,
-        level,
+        filled.astype(np.float32) @ weights.values,
+        kriging.field(filled, level, targets),
         lambda row: hour_variance(weights, gaps[row]),
         window.height.astype(np.float32) @ weights.values,
     )
@@ -191,6 +191,8 @@ def _empty(day: Day, cells: CellMaker) -> Fields:
         flag=flag.reshape(shape),
         scale_height=scale_height,
         station_count=used.astype(np.int16),
+        common_sigma=day.stations.common_sigma.values,
+        common_relative_sigma=day.stations.common_relative_sigma.values,
     )
 
 
@@ -200,33 +202,34 @@ def _fill_piece(
     """Fill some cells of the fields; returns how many values were clipped."""
     window, model = day.window, day.model
     solution = ENGINES[settings.kriging.engine](window, model, hours, cells)
-    way = np.abs(cells.ground - solution.station_height)
-    far = _FarCells(cells.distance[window.index] <= settings.kriging.far_distance)
-    constant = day.stations.common_sigma.values.astype(np.float32)
-    relative = day.stations.common_relative_sigma.values.astype(np.float32)
-    clipped = 0
-    for row, hour in enumerate(hours):
-        scale = model.scale_height[hour]
-        factor = np.exp((reference - cells.points) / np.float32(scale)).mean(axis=0)
-        pwv = solution.lifted[row] * factor
-        sigma = _sigma(
-            pwv,
-            solution.variance(row) * factor**2 * np.float32(model.variance_factor[hour]),
-            way * np.float32(model.scale_height_sigma[hour] / scale**2),
-            common_sigma(pwv, constant[hour], relative[hour]),
-        )
-        present = np.isfinite(model.values[hour])
-        flags = _quality(window.height[present], cells.ground, sigma)
-        flags |= far.flags(present)
-        clipped += int((pwv < 0.0).sum())
-        for field, values in zip(
-            (made.pwv, made.sigma, made.at_reference),
-            (pwv, sigma, solution.level[row]),
-            strict=True,
-        ):
-            field[hour].reshape(-1)[cells.rows] = _pack(values)
-        made.flag[hour].reshape(-1)[cells.rows] |= flags
-    return clipped
+    scale = model.scale_height[hours].astype(np.float32)[:, None]
+    factor = np.exp((reference - cells.points) / scale[..., None]).mean(axis=1)
+    pwv = solution.lifted * factor
+    variance = np.stack([solution.variance(row) for row in range(len(hours))])
+    variance *= np.square(factor) * model.variance_factor[hours].astype(np.float32)[:, None]
+    height_sigma = model.scale_height_sigma[hours].astype(np.float32)[:, None] / np.square(scale)
+    sigma = _sigma(
+        pwv,
+        variance,
+        np.abs(cells.ground - solution.station_height) * height_sigma,
+        _common_sigma(day, hours, pwv),
+    )
+    flags = _quality(window, model.values[hours], cells, sigma, settings.kriging.far_distance)
+    for field, values in (
+        (made.pwv, pwv),
+        (made.sigma, sigma),
+        (made.at_reference, solution.level),
+    ):
+        field.reshape(len(field), -1)[hours, cells.rows] = _pack(values)
+    made.flag.reshape(len(made.flag), -1)[hours, cells.rows] |= flags
+    return int((pwv < 0.0).sum())
+
+
+def _common_sigma(day: Day, hours, pwv):
+    """Standard error (t, m) [kg m-2] that all cells of an hour share."""
+    parts = (day.stations.common_sigma, day.stations.common_relative_sigma)
+    constant, relative = (part.values[hours].astype(np.float32)[:, None] for part in parts)
+    return common_sigma(pwv, constant, relative)
 
 
 def _sigma(pwv, kriging_variance, relative_height_sigma, common):
@@ -243,25 +246,17 @@ def _pack(values):
     return np.rint(np.clip(values, 0.0, 320.0) * np.float32(1.0 / PACKED_STEP)).astype(np.int16)
 
 
-def _quality(heights, ground, sigma):
-    """Flag bits (m,) of an hour with stations at `heights` [m]."""
-    beyond = (ground > heights.max() + HEIGHT_TOLERANCE) | (
-        ground < heights.min() - HEIGHT_TOLERANCE
-    )
-    flags = beyond.astype(np.int8) * np.int8(FIELD_FLAGS["extrapolated_in_height"])
-    unusable = (sigma > UNUSABLE_SIGMA).astype(np.int8)
-    return flags | unusable * np.int8(FIELD_FLAGS["sigma_above_5_kg_m2"])
-
-
-class _FarCells:
-    """Cells without a station near them, quick to tell for any set of stations."""
-
-    def __init__(self, near):
-        """near : (n, m) bool, station within the limit of the cell"""
-        self._near = near
-        self._count = near.sum(axis=0, dtype=np.int16)
-
-    def flags(self, present):
-        """Flag bits (m,) with the stations present (n,) bool."""
-        missing = self._near[~present].sum(axis=0, dtype=np.int16)
-        return (self._count == missing).astype(np.int8) * np.int8(FIELD_FLAGS["far_from_stations"])
+def _quality(window: Window, values, cells: Cells, sigma, far_distance: float):
+    """Flag bits (t, m) int8 of hours with the stations' values (t, n), NaN where missing."""
+    present = np.isfinite(values)
+    highest = np.where(present, window.height, -np.inf).max(axis=1, keepdims=True)
+    lowest = np.where(present, window.height, np.inf).min(axis=1, keepdims=True)
+    ground = cells.ground
+    near = (cells.distance[window.index] <= far_distance).astype(np.float32)
+    found = {
+        "extrapolated_in_height": (ground > highest + HEIGHT_TOLERANCE)
+        | (ground < lowest - HEIGHT_TOLERANCE),
+        "far_from_stations": present.astype(np.float32) @ near < 0.5,
+        "sigma_above_5_kg_m2": sigma > UNUSABLE_SIGMA,
+    }
+    return sum(np.int8(FIELD_FLAGS[name]) * bits for name, bits in found.items())

@@ -62,6 +62,18 @@ QUANTITIES = {
     "residual_sigma": Quantity(
         "kg m-2", "", "standard error of the residual", content="qualityInformation"
     ),
+    "common_sigma": Quantity(
+        "kg m-2",
+        "",
+        "standard error that all cells of an hour share: constants and orbits",
+        content="qualityInformation",
+    ),
+    "common_relative_sigma": Quantity(
+        "1",
+        "",
+        "standard error that all cells of an hour share, relative: mean temperature",
+        content="qualityInformation",
+    ),
     "pwv_at_reference": Quantity(
         "kg m-2", _WATER_VAPOUR, "precipitable water vapour above the reference height"
     ),

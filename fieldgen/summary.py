@@ -2,22 +2,18 @@
 
 from __future__ import annotations
 
-import io
-
 import numpy as np
 import xarray as xr
-from rich.console import Console
 from rich.table import Table
 from rich.text import Text
 
 from fieldgen.readers.network import Network, ReadingReport
 from fieldgen.report import DayReport, RunReport
 from fieldgen.station.screening import STATION_FLAGS
+from fieldgen.text_table import new_table, render
 
 WARNINGS_SHOWN = 8
 """Further warnings are counted; all of them stand in run.json."""
-
-_WIDTH = 100
 
 
 def format_run(run: RunReport) -> str:
@@ -75,7 +71,7 @@ def _format_reading(report: ReadingReport) -> str:
 
 def _station_table(run: RunReport) -> Table | None:
     """Stations that lost values, with the reasons; None where every value was used."""
-    table = _table("station", "steps used", *(name.replace("_", " ") for name in STATION_FLAGS))
+    table = new_table("station", "steps used", *(name.replace("_", " ") for name in STATION_FLAGS))
     for station, counts in sorted(run.station_totals().items()):
         if any(counts[name] for name in STATION_FLAGS):
             reasons = (str(counts[name] or "") for name in STATION_FLAGS)
@@ -84,7 +80,7 @@ def _station_table(run: RunReport) -> Table | None:
 
 
 def _day_table(days: list[DayReport]) -> Table:
-    table = _table(
+    table = new_table(
         "day",
         "steps",
         "scale height [m]",
@@ -93,6 +89,7 @@ def _day_table(days: list[DayReport]) -> Table:
         "nugget",
         "LOO RMSE",
         "note",
+        left=("note",),
     )
     for day in days:
         covariance = day.covariance or {}
@@ -104,14 +101,6 @@ def _day_table(days: list[DayReport]) -> Table:
             _number(_rmse(day)),
             covariance.get("note", "too few stations"),
         )
-    return table
-
-
-def _table(*columns: str) -> Table:
-    table = Table(box=None, pad_edge=False, header_style="")
-    for index, column in enumerate(columns):
-        last = column == "note"
-        table.add_column(column, justify="left" if index == 0 or last else "right")
     return table
 
 
@@ -141,8 +130,4 @@ def _format_totals(totals: dict) -> str:
 
 
 def _render(table: Table | None) -> str:
-    if table is None:
-        return ""
-    buffer = io.StringIO()
-    Console(file=buffer, width=_WIDTH, highlight=False).print(table)
-    return "\n" + buffer.getvalue().rstrip()
+    return "" if table is None else f"\n{render(table)}"

@@ -12,7 +12,7 @@ import fieldgen
 ROOT = Path(fieldgen.__file__).parent
 
 LAYERS = [
-    ["errors", "constants", "quantities"],
+    ["errors", "constants", "quantities", "memory"],
     ["kriging", "station"],
     ["settings"],
     ["ground"],

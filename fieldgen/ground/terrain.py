@@ -123,6 +123,9 @@ def _sample(raster, longitude, latitude):
 
     to_raster = pyproj.Transformer.from_crs("EPSG:4326", raster.crs, always_xy=True)
     x, y = to_raster.transform(longitude, latitude)
+    around_the_globe = raster.crs.is_geographic and raster.width * raster.res[0] > 359.999
+    if raster.crs.is_geographic:  # longitudes may run from -180 or from 0
+        x = raster.bounds.left + (np.asarray(x) - raster.bounds.left) % 360.0
     row, column = rasterio.transform.rowcol(raster.transform, x, y, op=lambda position: position)
     column, row = np.asarray(column) - 0.5, np.asarray(row) - 0.5
     inside = (
@@ -132,6 +135,8 @@ def _sample(raster, longitude, latitude):
     values = np.full(len(column), np.nan)
     if inside.any():
         band = raster.read(1, masked=True).astype(float).filled(SEA_LEVEL)
+        if around_the_globe:  # the last column borders on the first
+            band = np.column_stack([band, band[:, 0]])
         values[inside] = map_coordinates(
             band, [row[inside], column[inside]], order=1, mode="nearest"
         )

@@ -52,8 +52,12 @@ AUTO = "auto"
 MINIMUM_STATIONS = 8
 """Fewer stations than this cannot tell a range from a sill."""
 
-HOURS_USED = 16
+HOURS_USED = 12
 """Neighbouring hours say nearly the same; this many, spread over the window, say it all."""
+
+STATIONS_USED = 80
+"""Of a larger network this many stations, spread over the list, are fitted to: the cost of a step
+grows with their third power, what they tell hardly at all."""
 
 DECAY_LIMITS = (1e-4, 2e-3)
 """Of ln PWV with height [m-1]: scale heights of 10 km and 500 m."""
@@ -84,7 +88,13 @@ def _names(profile: bool) -> list[str]:
 
 
 def fit_covariance(
-    values, error_variance, stations: Places, model: str, *, profile: bool = True
+    values,
+    error_variance,
+    stations: Places,
+    model: str,
+    *,
+    profile: bool = True,
+    near: Covariance | None = None,
 ) -> CovarianceFit:
     """Covariance fitted by restricted maximum likelihood, every hour with its own drift.
 
@@ -93,6 +103,7 @@ def fit_covariance(
     model : a name of `MODELS`, or `AUTO`
     stations : Places of the n stations; what their drift explains does not count as variability
     profile : whether the profile may differ from the hour's exponential, see `Covariance`
+    near : a covariance of nearly the same values, whose model is kept and where the search starts
 
     Each parameter has the weak expectation of `EXPECTED`, and bounds; the range lies between the
     median distance of nearest stations and three times the network's diameter. Falls back to the
@@ -103,12 +114,21 @@ def fit_covariance(
     if not len(hours):
         note = f"fewer than {MINIMUM_STATIONS} stations in every hour: usual covariance"
         return CovarianceFit(usual_covariance(model, profile=profile), False, note)
-    hours = hours[np.unique(np.linspace(0, len(hours) - 1, HOURS_USED).round().astype(int))]
-    fits = [
-        RestrictedLikelihood(values[hours], error_variance, stations, name, profile).maximise()
-        for name in (MODELS if model == AUTO else [model])
-    ]
+    hours = hours[_spread(len(hours), HOURS_USED)]
+    used = _spread(len(stations.lift), STATIONS_USED)
+    values, error_variance, stations = values[hours][:, used], error_variance[used], stations[used]
+    start = near or usual_covariance(model, profile=profile)
+    names = list(MODELS) if model == AUTO and near is None else [start.model]
+    fits = []
+    for name in names:  # their ranges mean the same, so each starts where the last one ended
+        likelihood = RestrictedLikelihood(values, error_variance, stations, name, profile)
+        fits.append(likelihood.maximise(fits[-1].covariance if fits else start))
     return max(fits, key=lambda fit: fit.log_likelihood)
+
+
+def _spread(count: int, most: int):
+    """Indices of at most `most` of `count` items, evenly spread."""
+    return np.unique(np.linspace(0, count - 1, most).round().astype(int))
 
 
 class RestrictedLikelihood:
@@ -119,7 +139,8 @@ class RestrictedLikelihood:
     """
 
     def __init__(self, values, error_variance, stations: Places, model: str, profile: bool):
-        self.values = values
+        self.missing = np.isnan(values)
+        self.values = np.where(self.missing, 0.0, values)
         self.error_variance = error_variance
         self.stations = stations
         self.model = model
@@ -137,17 +158,17 @@ class RestrictedLikelihood:
         high["range"] = max(_RANGE_IN_DIAMETERS * float(self.distance.max()), 2.0 * low["range"])
         return np.log([list(low.values()), list(high.values())])
 
-    def maximise(self) -> CovarianceFit:
-        """The covariance of the highest likelihood within the bounds."""
+    def maximise(self, start: Covariance) -> CovarianceFit:
+        """The covariance of the highest likelihood within the bounds, searched from `start`."""
         lower, upper = self.bounds()
-        start = np.clip(np.log([EXPECTED[name].usual for name in self.names]), lower, upper)
+        start = np.clip(np.log([getattr(start, name) for name in self.names]), lower, upper)
         found = minimize(
             self.objective,
             start,
             jac=True,
             method="L-BFGS-B",
             bounds=list(zip(lower, upper, strict=True)),
-            options={"ftol": 1e-7},
+            options={"ftol": 1e-5},
         )
         at_bound = [
             name
@@ -166,46 +187,43 @@ class RestrictedLikelihood:
         """Value and gradient (p,) of the negative log likelihood and the expectations."""
         covariance = self.covariance(log_parameters)
         kriging = Kriging(covariance, self.stations, self.error_variance)
-        gaps = [kriging.gaps(np.isnan(row)) for row in self.values]
+        gaps = [kriging.gaps(row) for row in self.missing]
         filled = np.stack([kriging.fill(*pair) for pair in zip(gaps, self.values, strict=True)])
         residual = filled @ kriging.projector  # each hour's own projector times its values
         value = 0.5 * (
             len(gaps) * kriging.log_determinant
             - sum(gap.log_determinant for gap in gaps)
-            + np.vdot(np.nan_to_num(self.values), residual)
+            + np.vdot(self.values, residual)
         )
-        gradient = [
-            _slope(kriging.projector, derivative, residual, gaps)
-            for derivative in self._derivatives(covariance)
-        ]
+        gradient = self._gradient(covariance, kriging, gaps, residual)
         usual, spread = np.array([EXPECTED[name][:2] for name in self.names]).T
         away = (log_parameters - np.log(usual)) / spread
-        return value + 0.5 * away @ away, np.array(gradient) + away / spread
+        return value + 0.5 * away @ away, gradient + away / spread
+
+    def _gradient(self, covariance: Covariance, kriging: Kriging, gaps: list[Gaps], residual):
+        """Half of tr(P' dA) - (P' z)' dA (P' z), summed over the hours with their own P'.
+
+        All hours and parameters share one matrix, because P' = P - P E S E' P.
+        """
+        updates = np.zeros_like(kriging.projector)
+        for gap in gaps:
+            updates[gap.changed[:, None], gap.changed] += gap.update
+        shared = len(gaps) * kriging.projector - residual.T @ residual
+        shared -= kriging.projector @ updates @ kriging.projector
+        return np.array([0.5 * np.vdot(shared, part) for part in self._derivatives(covariance)])
 
     def _derivatives(self, covariance: Covariance):
         """Derivatives (n, n) of the stations' covariance by the log of each parameter."""
         correlation = covariance.correlation(self.distance)
-        step = 1e-4
-        longer = covariance._replace(range=covariance.range * np.exp(step))
-        shorter = covariance._replace(range=covariance.range * np.exp(-step))
-        slope = longer.correlation(self.distance) - shorter.correlation(self.distance)
         sills = covariance.partial_sill + covariance.slope_sill * self.lifts
         derivatives = {
             "partial_sill": covariance.partial_sill * correlation,
-            "range": sills * slope / (2.0 * step),
+            "range": sills * covariance.stretch(self.distance),
             "nugget": covariance.nugget * np.eye(len(correlation)),
             "slope_sill": covariance.slope_sill * self.lifts * correlation,
             "curvature_sill": covariance.curvature_sill * self.lifts**2,
         }
         return [derivatives[name] for name in self.names]
-
-
-def _slope(projector, derivative, residual, gaps: list[Gaps]) -> float:
-    """Derivative of the negative log likelihood: half of tr(P' dA) - (P' z)' dA (P' z), summed."""
-    around = projector @ derivative @ projector
-    trace = len(gaps) * np.vdot(projector, derivative)
-    trace -= sum(np.vdot(gap.update, around[gap.changed[:, None], gap.changed]) for gap in gaps)
-    return 0.5 * float(trace - np.vdot(residual @ derivative, residual))
 
 
 @dataclass(frozen=True)

@@ -7,7 +7,8 @@ With the drift functions F (n, k) and G = (F' A^-1 F)^-1 everything follows from
     P = A^-1 - A^-1 F G F' A^-1.
 
 Weights. For a target with covariances c and drift functions f, w = P c + A^-1 F G f, and the
-variance is C(0) + f' G f - c' (w + A^-1 F G f).
+variance is C(0) + f' G f - c' (w + A^-1 F G f). The field alone needs no weights: with P z and
+G F' A^-1 z once for all targets it is c' P z + f' G F' A^-1 z, the dual form.
 
 Gaps. A station that is missing, or whose error variance is larger in one hour than in the others
 by `excess`, changes A by a diagonal of low rank. With q the stations concerned and
@@ -28,7 +29,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.linalg import cho_factor, cho_solve
+from scipy.linalg import lapack
 
 from fieldgen.kriging.covariance import Covariance, distances
 from fieldgen.kriging.places import Places
@@ -39,11 +40,11 @@ class Weights:
     """Kriging weights of targets from the full set of stations.
 
     values : (n, m), a row for each station, so that a missing station's row is contiguous
-    variance : (m,) kriging variance with every station present, or None
+    variance : (m,) kriging variance with every station present
     """
 
     values: np.ndarray
-    variance: np.ndarray | None
+    variance: np.ndarray
 
 
 @dataclass(frozen=True)
@@ -81,33 +82,43 @@ class Kriging:
         self._solve(matrix)
 
     def _solve(self, matrix) -> None:
-        factor = cho_factor(matrix, lower=True, check_finite=False)
+        factor, failed = lapack.dpotrf(matrix, lower=1)
+        if failed:
+            raise np.linalg.LinAlgError("the stations' covariance is not positive definite")
+        half, _ = lapack.dpotri(factor, lower=1)
+        inverse = np.tril(half) + np.tril(half, -1).T
         drift = self.stations.drift
-        inverse = cho_solve(factor, np.eye(len(drift)), check_finite=False)
         solved_drift = inverse @ drift
         information = drift.T @ solved_drift
         self.drift_covariance = np.linalg.inv(information)  # G
         self.drift_weights = solved_drift @ self.drift_covariance  # A^-1 F G
         self.projector = inverse - self.drift_weights @ solved_drift.T
-        self.log_determinant = 2.0 * float(np.log(np.diag(factor[0])).sum())
+        self.log_determinant = 2.0 * float(np.log(np.diag(factor)).sum())
         self.log_determinant += float(np.linalg.slogdet(information)[1])
 
-    def weights(self, targets: Places, dtype=np.float32, distance=None) -> Weights:
-        """Weights and variance of m targets with every station present.
+    def weights(self, targets: Places, dtype=np.float32) -> Weights:
+        """Weights and variance of m targets with every station present."""
+        distance = distances(self.stations.positions, targets.positions).astype(dtype)
+        covariances = self.covariance.between(distance, self.stations.lift, targets.lift)
+        return self.weights_of_covariances(covariances, targets)
 
-        distance : (n, m) [km] from the stations to the targets, if it is known already
-        """
-        if distance is None:
-            distance = distances(self.stations.positions, targets.positions).astype(dtype)
-        to_targets = self.covariance.between(distance, self.stations.lift, targets.lift)
+    def weights_of_covariances(self, covariances, targets: Places) -> Weights:
+        """The same from the covariances (n, m) of stations and targets, in their precision."""
+        dtype = covariances.dtype
         by_drift = (self.drift_weights @ targets.drift.T).astype(dtype)
-        weights = self.projector.astype(dtype) @ to_targets
+        weights = self.projector.astype(dtype) @ covariances
         weights += by_drift
-        trend = np.einsum("mi,ij,mj->m", targets.drift, self.drift_covariance, targets.drift)
         by_drift += weights
-        explained = np.einsum("nm,nm->m", to_targets, by_drift)
+        explained = np.einsum("nm,nm->m", covariances, by_drift)
+        trend = np.einsum("mi,ij,mj->m", targets.drift, self.drift_covariance, targets.drift)
         variance = self.covariance.at(targets.lift) + trend - explained
         return Weights(weights, np.maximum(variance, 0.0).astype(dtype))
+
+    def field(self, filled, covariances, targets: Places):
+        """Field (t, m) of filled values (t, n) without any weights: the dual form of kriging."""
+        dtype = covariances.dtype
+        field = (filled @ self.projector).astype(dtype) @ covariances
+        return field + (filled @ self.drift_weights).astype(dtype) @ targets.drift.T.astype(dtype)
 
     def gaps(self, missing, excess=None) -> Gaps:
         """Gaps of an hour: missing (n,) bool; excess (n,) error variance beyond the usual, >= 0."""

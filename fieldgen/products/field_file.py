@@ -43,7 +43,8 @@ def packed_dataset(
     """Dataset of packed fields with all CF attributes; dimensions time, y, x.
 
     terrain_height (ny, nx) [m]; time (t,) datetime64; fields: packed pwv, sigma, at_reference, and
-    flag (t, ny, nx), scale_height, station_count (t,); processing: text that says how it was made
+    flag (t, ny, nx), scale_height, station_count and the parts of the common error (t,);
+    processing: text that says how it was made
     """
     space = ("time", "y", "x")
     dataset = xr.Dataset(
@@ -59,6 +60,12 @@ def packed_dataset(
             "station_count": (
                 "time", fields.station_count, QUANTITIES["station_count"].attributes()
             ),
+            "common_sigma": ("time", fields.common_sigma, QUANTITIES["common_sigma"].attributes()),
+            "common_relative_sigma": (
+                "time",
+                fields.common_relative_sigma,
+                QUANTITIES["common_relative_sigma"].attributes(),
+            ),
             "crs": ((), np.int32(0), grid.crs.to_cf()),
         },
         coords=_coordinates(grid, time, network.time_step),
@@ -71,6 +78,7 @@ def packed_dataset(
             bounds=_geographic_bounds(grid),
         ),
     )  # fmt: skip
+    dataset = dataset.reset_coords(["time_bnds", "y_bnds", "x_bnds"])
     dataset.attrs["processing"] = processing
     for name in ("pwv", "pwv_sigma", "pwv_at_reference", "flag", "terrain"):
         dataset[name].attrs["grid_mapping"] = "crs"
@@ -96,7 +104,9 @@ def _pwv_attributes() -> dict:
         | {
             "ancillary_variables": "pwv_sigma flag",
             "cell_methods": "time: mean area: mean",
-            "comment": "1 kg m-2 is 1 mm of liquid water.",
+            "comment": "1 kg m-2 is 1 mm of liquid water. The standard error counts what all cells "
+            "share, sqrt(common_sigma^2 + (common_relative_sigma pwv)^2), and a mean over cells does "
+            "not make that smaller.",
         }
     )
 
@@ -174,6 +184,8 @@ def _set_encoding(dataset: xr.Dataset) -> None:
         dataset[name].encoding = {**COMPRESSION, **chunks}
     dataset["terrain"].encoding = {"dtype": "float32", "_FillValue": None, **COMPRESSION}
     dataset["scale_height"].encoding = {"dtype": "float32", "_FillValue": np.float32(-9999.0)}
+    for name in ("common_sigma", "common_relative_sigma"):
+        dataset[name].encoding = {"dtype": "float32", "_FillValue": None}
     dataset["station_count"].encoding = {"dtype": "int16", "_FillValue": None}
     for name in ("x", "y", "x_bnds", "y_bnds"):
         dataset[name].encoding = {"_FillValue": None}

@@ -43,6 +43,7 @@ def station_dataset(
         dataset[name].encoding = {"dtype": dtype, "_FillValue": _FILL, "zlib": True}
     dataset["pwv"].attrs |= {"ancillary_variables": "pwv_sigma flag", "cell_methods": "time: mean"}
     _add_codes(dataset, turned, flag_bits, pressure_sources)
+    dataset = dataset.reset_coords("time_bnds")
     dataset.attrs = _attributes(turned, network, time)
     return dataset
 

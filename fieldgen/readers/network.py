@@ -135,8 +135,7 @@ def _read_table(settings: Settings, report: ReadingReport) -> dict[str, StationR
 
 def _time_grid(settings: Settings, delays: list[DelayRecords]) -> TimeGrid:
     step = np.timedelta64(int(settings.network.time_step.total_seconds()), "s")
-    edges = np.array([edge for r in delays for edge in (r.time.min(), r.time.max())])
-    return TimeGrid.around(edges, step)
+    return TimeGrid.around(np.concatenate([np.unique(records.time) for records in delays]), step)
 
 
 def _grid_delays(

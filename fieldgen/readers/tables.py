@@ -89,7 +89,7 @@ def read_delay_table(path, *, name: str | None = None) -> DelayRecords:
     or missing columns, and if no line can be used.
     """
     name = name or str(path)
-    table = _Table(name, *read_header(path, name, DELAY_TABLE))
+    table = Table(name, *read_header(path, name, DELAY_TABLE))
     columns, places = _read_records(path, table, "station", DELAY_VALUES)
     return delay_records(name, list(places.ids), columns, table.rejections, **places.about())
 
@@ -97,7 +97,7 @@ def read_delay_table(path, *, name: str | None = None) -> DelayRecords:
 def read_weather_table(path, *, name: str | None = None) -> WeatherRecords:
     """Weather of a table with the columns of WEATHER_TABLE, plain or gzip; else as the delays."""
     name = name or str(path)
-    table = _Table(name, *read_header(path, name, WEATHER_TABLE))
+    table = Table(name, *read_header(path, name, WEATHER_TABLE))
     columns, places = _read_records(path, table, "site", WEATHER_VALUES)
     return weather_records(name, list(places.ids), columns, table.rejections, **places.about())
 
@@ -111,7 +111,7 @@ def read_station_table(
     longitude and latitude were exchanged is rejected. Raises InputError as the other tables do.
     """
     name = name or str(path)
-    table = _Table(name, *read_header(path, name, STATION_TABLE))
+    table = Table(name, *read_header(path, name, STATION_TABLE))
     stations, lines = _read_stations(path, table)
     for station in exchanged_positions(list(stations.values())):
         del stations[station.id]
@@ -124,7 +124,7 @@ def read_station_table(
     return stations, table.rejections
 
 
-def _read_stations(path, table: _Table) -> tuple[dict[str, StationRow], dict[str, int]]:
+def _read_stations(path, table: Table) -> tuple[dict[str, StationRow], dict[str, int]]:
     """Stations by identifier, and the line that each comes from."""
     lines: dict[str, int] = {}
     stations: dict[str, StationRow] = {}
@@ -173,7 +173,7 @@ def read_header(path, name: str, kind: TableKind) -> tuple[str, list[str]]:
 
 
 @dataclass
-class _Table:
+class Table:
     """A file whose header has been read."""
 
     file: str
@@ -326,7 +326,7 @@ class _Places:
 
 
 def _read_records(
-    path, table: _Table, id_column: str, value_names: tuple[str, ...]
+    path, table: Table, id_column: str, value_names: tuple[str, ...]
 ) -> tuple[Columns, _Places]:
     """Records, and the places they refer to."""
     places, rows = _Places(), Rows(value_names)

@@ -21,15 +21,20 @@ class TimeGrid:
 
     @classmethod
     def around(cls, times, step: np.timedelta64) -> TimeGrid:
-        """The grid, aligned with the day, of the steps that `times` (n,) datetime64[s] reach into.
+        """The grid, aligned with the day, that holds all `times` (n,) datetime64[s].
 
-        A first record on the edge between two steps does not make a step of its own.
+        Where records lie within the steps, one that stands alone on the first edge does not make a
+        step of its own: a day's file that begins at 00:00 does not make the last hour of the day
+        before. Records once a step, on its edges, each make their step.
         """
         seconds = step.astype("timedelta64[s]").astype(np.int64)
-        first = times.min().astype("datetime64[s]").astype(np.int64) // seconds
-        last = max(_step_number(times.max(), step), first + 1)
+        times = np.asarray(times).astype("datetime64[s]").astype(np.int64)
+        first, last = times.min() // seconds, -(-times.max() // seconds)
+        on_edges = (times % seconds == 0).all()
+        if times.min() % seconds == 0 and on_edges:
+            first -= 1
         epoch = np.datetime64(0, "s")
-        return cls(epoch + first * step, epoch + last * step, step)
+        return cls(epoch + first * step, epoch + max(last, first + 1) * step, step)
 
     @property
     def stamps(self):

@@ -80,7 +80,7 @@ def time_pykrige(path: Path) -> float:
 
     network = read_network(path)
     x, y = network.grid.locate(network.stations.longitude, network.stations.latitude)
-    values = network.delays.pwv.values
+    values = network.delays.ztd.values
     patterns = np.unique(np.isfinite(values), axis=0, return_index=True)[1]
     assert len(patterns) > len(values) // 2, "the gaps do not vary"
     parameters = {"psill": 6.0, "range": 150e3, "nugget": 0.5}

@@ -20,12 +20,24 @@ east = {east}
 north = {north}
 spacing = 1000
 [stations]
-delays = ["delays.csv"]
+delays = ["*.tro"]
+weather = ["weather.csv"]
+table = "stations.csv"
 [terrain]
 file = "terrain.tif"
 geoid = 57.0
 [products]
 maps = "none"
+"""
+
+HEADER = """%=TRO 2.00 TST {day}:00000 TST {day}:00000 {day}:86400 P MIX
++TROP/DESCRIPTION
+ TROPO PARAMETER NAMES          TROTOT STDDEV
+ TROPO PARAMETER UNITS          1e+03 1e+03
+ TROPO PARAMETER WIDTH          6 5
+-TROP/DESCRIPTION
++TROP/SOLUTION
+*STATION__ ____EPOCH_____ TROTOT STDDEV
 """
 
 START = np.datetime64("2026-03-01T00:30:00", "s")
@@ -47,7 +59,9 @@ def write_network(
     height = terrain[cells - 1 - (y / 1000).astype(int), (x / 1000).astype(int)]
     values = _water_vapour(x, y, height, hours, draw)
     values[_outages(hours, stations, gap_share, draw)] = np.nan
-    _write_delays(folder, x, y, height, values)
+    _write_stations(folder, x, y, height)
+    _write_weather(folder, hours)
+    _write_delays(folder, _zenith_delay(height, values))
     return folder / "network.toml"
 
 
@@ -85,22 +99,48 @@ def _outages(hours: int, stations: int, share: float, draw):
     return missing
 
 
-def _write_delays(folder: Path, x, y, height, values) -> None:
-    import pandas as pd
+def _write_stations(folder: Path, x, y, height) -> None:
     import pyproj
 
     to_degrees = pyproj.Transformer.from_crs("EPSG:32626", "EPSG:4326", always_xy=True)
     longitude, latitude = to_degrees.transform(x + 300000, y + 5100000)
-    hour, station = np.nonzero(np.isfinite(values))
-    table = pd.DataFrame(
-        {
-            "station": np.array([f"S{index:03d}" for index in range(len(x))])[station],
-            "time": np.datetime_as_string(START + hour.astype("m8[h]"), timezone="UTC"),
-            "pwv": values[hour, station].round(3),
-            "pwv_sigma": 0.7,
-            "longitude": longitude[station].round(6),
-            "latitude": latitude[station].round(6),
-            "orthometric_height": height[station].round(1),
-        }
-    )
-    table.to_csv(folder / "delays.csv", index=False)
+    lines = ["id,longitude,latitude,ellipsoidal_height,orthometric_height"]
+    lines += [
+        f"S{index:03d},{east:.6f},{north:.6f},{up + 57.0:.1f},{up:.1f}"
+        for index, (east, north, up) in enumerate(zip(longitude, latitude, height, strict=True))
+    ]
+    (folder / "stations.csv").write_text("\n".join(lines) + "\n")
+
+
+def _write_weather(folder: Path, hours: int) -> None:
+    """One barometer at sea level in the standard atmosphere."""
+    times = np.datetime_as_string(START + np.arange(hours).astype("m8[h]"), timezone="UTC")
+    place = "-29.0,46.5,0.0"
+    lines = ["site,time,pressure,temperature,relative_humidity,longitude,latitude,"
+             "orthometric_height"]  # fmt: skip
+    lines += [f"SEA0,{time},1013.25,288.15,0,{place}" for time in times]
+    (folder / "weather.csv").write_text("\n".join(lines) + "\n")
+
+
+def _zenith_delay(height, water_vapour):
+    """Delays (hours, stations) [m] of the standard atmosphere with water vapour [kg m-2]."""
+    pressure = 1013.25 * (1.0 - 0.0065 * height / 288.15) ** 5.2559
+    return 0.0022768 * pressure + water_vapour / 155.0
+
+
+def _write_delays(folder: Path, delay) -> None:
+    """SINEX_TRO files, one a day, without the missing records."""
+    for day, rows in enumerate(np.array_split(delay, range(24, len(delay), 24))):
+        date = START + np.timedelta64(day, "D")
+        year, start = date.astype("M8[Y]"), date.astype("M8[D]")
+        number = (start - year.astype("M8[D]")).astype(int) + 1
+        epochs = [f"{year}:{number:03d}:{3600 * hour + 1800:05d}" for hour in range(len(rows))]
+        lines = [
+            f" S{station:03d}      {epoch} {1000.0 * value:6.1f} {2.5:5.1f}"
+            for epoch, row in zip(epochs, rows, strict=True)
+            for station, value in enumerate(row)
+            if np.isfinite(value)
+        ]
+        head = HEADER.format(day=f"{year}:{number:03d}")
+        tail = "-TROP/SOLUTION\n%=ENDTRO\n"
+        (folder / f"day{day:03d}.tro").write_text(head + "\n".join(lines) + "\n" + tail)

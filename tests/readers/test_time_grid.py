@@ -27,9 +27,10 @@ def test_a_first_record_on_the_edge_makes_no_step():
     assert grid.stamps.tolist() == times("01:00:00").tolist()
 
 
-def test_a_single_epoch_has_a_step():
-    """A limit."""
-    assert len(TimeGrid.around(times("00:00:00"), HOUR).stamps) == 1
+@pytest.mark.parametrize("epochs", [["13:00:00"], ["13:00:00", "14:00:00", "15:00:00"]])
+def test_records_once_a_step_each_make_their_step(epochs):
+    """A limit: hourly values on the hour, be it a single one."""
+    assert TimeGrid.around(times(*epochs), HOUR).stamps.tolist() == times(*epochs).tolist()
 
 
 def test_missing_values_and_empty_steps_are_nan():
