@@ -19,7 +19,7 @@ from fieldgen.kriging.fitting import (
     fit_covariance,
     fit_scale_height,
 )
-from fieldgen.kriging.places import PlaceMaker, Places
+from fieldgen.kriging.places import PlaceMaker, Places, determine_drift
 from fieldgen.kriging.solver import Gaps, Kriging
 from fieldgen.settings import KrigingTable, ScreeningTable, Settings
 from fieldgen.station.heights import reduction_factor
@@ -85,7 +85,7 @@ class Model:
     values : (t, n) at the reference height [kg m-2]; NaN where not trusted
     excess : (t, n) error variance beyond the usual [kg2 m-4]
     variance_factor : (t,) of the hour's kriging variance
-    gaps : one an hour
+    gaps : one an hour, None where too few stations report
     """
 
     fit: CovarianceFit
@@ -95,7 +95,7 @@ class Model:
     values: np.ndarray
     excess: np.ndarray
     variance_factor: np.ndarray
-    gaps: list[Gaps]
+    gaps: list[Gaps | None]
 
 
 @dataclass(frozen=True)
@@ -149,7 +149,7 @@ def analyse_day(
     model, disagree, out = _model_window(settings, window)
     window, model = _cut(window, model)
     of_day = _with_tests(of_day, window, model, disagree[day], out)
-    return Day(window, model, _makable(window, model), of_day)
+    return Day(window, model, _makable(model), of_day)
 
 
 def _make_window(settings: Settings, stations: xr.Dataset, places: Places, rows: slice, day: slice):
@@ -207,7 +207,10 @@ def _fit_model(settings: Settings, window: Window, trusted, last: Model | None) 
     usual = _usual(variance)
     excess = np.nan_to_num(np.where(variance > EXCESS_RATIO * usual, variance - usual, 0.0))
     kriging = Kriging(fit.covariance, window.places, usual)
-    gaps = [kriging.gaps(~row, more) for row, more in zip(trusted, excess, strict=True)]
+    gaps = [
+        kriging.gaps(~row, more) if _enough(window.places, row) else None
+        for row, more in zip(trusted, excess, strict=True)
+    ]
     factor = _variance_factor(kriging, values, gaps, moisture**2)
     return Model(fit, kriging, scale, sigma, values, excess, factor, gaps)
 
@@ -250,7 +253,7 @@ def _fit_scale_heights(settings: Settings, window: Window, kriging: Kriging, val
     for water_vapour, at_reference in zip(window.pwv, values, strict=True):
         prior = usual.remembering(found[-1], kept)
         trusted = np.isfinite(at_reference)
-        if trusted.sum() < MINIMUM_STATIONS:
+        if not _enough(window.places, trusted):
             found.append(prior)
             continue
         measured = fit_scale_height(
@@ -278,13 +281,21 @@ def _relative_moisture(values, day: slice):
     return np.where(reporting, mean / np.nanmean(of_day), 1.0)
 
 
-def _variance_factor(kriging: Kriging, values, gaps: list[Gaps], expected):
+def _enough(places: Places, present) -> bool:
+    """Whether the stations present (n,) bool are enough for a field."""
+    return present.sum() >= MINIMUM_STATIONS and determine_drift(places, present)
+
+
+def _variance_factor(kriging: Kriging, values, gaps: list[Gaps | None], expected):
     """How much more or less each hour (t,) varies than the day, drawn towards `expected` (t,)."""
-    filled = np.stack([kriging.fill(*pair) for pair in zip(gaps, values, strict=True)])
-    squares = np.einsum("tn,tn->t", np.nan_to_num(values), filled @ kriging.projector)
-    freedom = np.isfinite(values).sum(axis=1) - kriging.stations.drift.shape[1]
-    freedom = np.maximum(freedom, 0)
-    return (VARIANCE_FREEDOM * expected + squares) / (VARIANCE_FREEDOM + freedom)
+    factor = np.array(expected, dtype=float)
+    for hour, (gap, row) in enumerate(zip(gaps, values, strict=True)):
+        if gap is None:
+            continue
+        squares = np.nan_to_num(row) @ kriging.projector @ kriging.fill(gap, row)
+        freedom = np.isfinite(row).sum() - kriging.stations.drift.shape[1]
+        factor[hour] = (VARIANCE_FREEDOM * factor[hour] + squares) / (VARIANCE_FREEDOM + freedom)
+    return factor
 
 
 def _screen(limits: ScreeningTable, window: Window, model: Model):
@@ -294,7 +305,9 @@ def _screen(limits: ScreeningTable, window: Window, model: Model):
     """
     values, _ = window.at_reference(model.scale_height)
     out = np.zeros(values.shape[1], bool)
-    while (worst := _worst_station(limits, model, np.where(out, np.nan, values))) is not None:
+    while (
+        worst := _worst_station(limits, window, model, np.where(out, np.nan, values))
+    ) is not None:
         out[worst] = True
     rest = np.where(out, np.nan, values)
     disagree = np.stack(
@@ -313,18 +326,14 @@ def _screen(limits: ScreeningTable, window: Window, model: Model):
     return disagree, out | often_gone(disagree, np.isfinite(rest), limits.condemn_share)
 
 
-def _worst_station(limits: ScreeningTable, model: Model, values) -> int | None:
+def _worst_station(limits: ScreeningTable, window: Window, model: Model, values) -> int | None:
     """The station most biased against the others over the window, if enough are left to tell."""
     if np.isfinite(values).any(axis=0).sum() <= MINIMUM_STATIONS:
         return None
-    gaps = [
-        model.kriging.gaps(np.isnan(row), more)
-        for row, more in zip(values, model.excess, strict=True)
-    ]
     found = [
-        model.kriging.leave_one_out(row, gap)
-        for row, gap in zip(values, gaps, strict=True)
-        if np.isfinite(row).sum() > MINIMUM_STATIONS
+        model.kriging.leave_one_out(row, model.kriging.gaps(np.isnan(row), more))
+        for row, more in zip(values, model.excess, strict=True)
+        if _enough(window.places, np.isfinite(row))
     ]
     if not found:
         return None
@@ -350,12 +359,9 @@ def _cut(window: Window, model: Model) -> tuple[Window, Model]:
     return cut_window, cut_model
 
 
-def _makable(window: Window, model: Model):
-    """Hours (t,) bool with enough stations, and with enough places for the drift."""
-    present = np.isfinite(model.values)
-    functions = window.places.drift
-    spans = [np.linalg.matrix_rank(functions[row]) == functions.shape[1] for row in present]
-    return (present.sum(axis=1) >= MINIMUM_STATIONS) & np.array(spans)
+def _makable(model: Model):
+    """Hours (t,) bool with enough stations for a field."""
+    return np.array([gap is not None for gap in model.gaps])
 
 
 def _with_tests(stations: xr.Dataset, window: Window, model: Model, disagree, out) -> xr.Dataset:
@@ -368,7 +374,7 @@ def _with_tests(stations: xr.Dataset, window: Window, model: Model, disagree, ou
     residual, sigma = np.full(shape, np.nan), np.full(shape, np.nan)
     at_reference, _ = window.at_reference(model.scale_height)
     factor = window.pwv / at_reference
-    for hour in np.flatnonzero(_makable(window, model)):
+    for hour in np.flatnonzero(_makable(model)):
         found = _residuals(model, hour, at_reference[hour])
         residual[hour, window.index], sigma[hour, window.index] = found * factor[hour]
     return _assign(stations, bits, residual, sigma)

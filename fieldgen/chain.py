@@ -15,7 +15,6 @@ from fieldgen.period import Piece, pieces
 from fieldgen.products.field_file import unpack_fields
 from fieldgen.readers.network import Network
 from fieldgen.report import DayReport, RunReport
-from fieldgen.retrieval import retrieve_water_vapour
 
 
 def make_fields(network: Network, start: str | None = None, end: str | None = None) -> xr.Dataset:
@@ -25,7 +24,7 @@ def make_fields(network: Network, start: str | None = None, end: str | None = No
     `fieldgen.products.field_file.packed_dataset`. Hours with too few stations are NaN and flagged.
     Raises InputError if the period is reversed or holds no step of the input.
     """
-    maker = DayMaker(network, retrieve_water_vapour(network))
+    maker = DayMaker(network)
     made = [maker.compute(piece) for piece in _pieces(network, start, end)]
     time = np.concatenate([day.stations.time.values for day, _ in made])
     return unpack_fields(maker.packed_dataset(time, join_fields([fields for _, fields in made])))
@@ -46,11 +45,9 @@ def make(
     progress : called with the name of each day when it is done, and the number of days
     Raises InputError if the period is empty, OutputError if the folder cannot be written.
     """
-    stations = retrieve_water_vapour(network)
     days = _pieces(network, start, end)
-    period = stations.isel(time=slice(days[0].first, days[-1].last))
-    limits = colour_limits(network.settings, period)
-    writer = DayWriter(DayMaker(network, stations), folder, limits)
+    limits = colour_limits(network, days[0].first, days[-1].last)
+    writer = DayWriter(DayMaker(network), folder, limits)
     reports = []
     for report in _run(writer, days, _maps_by_day(network.settings.products.maps, days), jobs):
         reports.append(report)

@@ -21,13 +21,20 @@ from fieldgen.products.field_file import packed_dataset, unpack_fields, write_fi
 from fieldgen.products.station_file import station_dataset, write_stations
 from fieldgen.readers.network import Network
 from fieldgen.report import DayReport, report_day
+from fieldgen.retrieval import retrieve_water_vapour
 from fieldgen.settings import Settings
 from fieldgen.station.heights import reduction_factor
-from fieldgen.station.screening import STATION_FLAGS
+from fieldgen.station.screening import MEDIAN_HOURS, STATION_FLAGS
 from fieldgen.station.surface_air import PRESSURE_SOURCES
 
 if TYPE_CHECKING:
     from fieldgen.products.maps import MapPainter
+
+STEPS_AFTER = MEDIAN_HOURS // 2
+"""Steps after a day that the test for jumps looks at."""
+
+STEPS_FOR_LIMITS = 48
+"""Steps, spread over the period, that the limits of the maps' colours are taken from."""
 
 LIMITS_WITHOUT_DATA = (0.0, 50.0)
 """Colour limits where no station has a value [kg m-2]."""
@@ -35,30 +42,35 @@ LIMITS_WITHOUT_DATA = (0.0, 50.0)
 
 @dataclass(frozen=True)
 class DayMaker:
-    """Makes the days of a network.
-
-    stations : what `fieldgen.retrieval.retrieve_water_vapour` returns
-    """
+    """Makes the days of a network, each from the steps around it alone."""
 
     network: Network
-    stations: xr.Dataset
 
     @cached_property
     def _places(self) -> tuple[PlaceMaker, Places]:
-        return locate(self.network.settings, self.stations)
+        return locate(self.network.settings, self.network.stations)
 
     @cached_property
     def _cells(self) -> CellMaker:
-        network, reference = self.network, reference_height(self.network.settings, self.stations)
+        network = self.network
+        reference = reference_height(network.settings, network.stations)
         return CellMaker(network.grid, network.terrain, *self._places, reference)
+
+    def analyse(self, piece: Piece) -> Day:
+        """Model of a day."""
+        settings = self.network.settings
+        window = int(settings.kriging.window / settings.network.time_step)
+        start = min(max(piece.last - window, 0), piece.first)
+        stations = retrieve_water_vapour(self.network, slice(start, piece.last + STEPS_AFTER))
+        places = self._places[1]
+        return analyse_day(settings, stations, places, piece.first - start, piece.last - start)
 
     def compute(self, piece: Piece) -> tuple[Day, Fields]:
         """Model and fields of a day."""
-        settings = self.network.settings
         keep_freed_memory()
         with threadpool_limits(1):  # results must not depend on how BLAS splits its sums
-            day = analyse_day(settings, self.stations, self._places[1], piece.first, piece.last)
-            return day, make_fields_of_day(settings, self._cells, day)
+            day = self.analyse(piece)
+            return day, make_fields_of_day(self.network.settings, self._cells, day)
 
     def packed_dataset(self, time, fields: Fields) -> xr.Dataset:
         """Fields (t, ny, nx) of one or several days with all their metadata, packed."""
@@ -70,7 +82,7 @@ class DayMaker:
             fields=fields,
             flag_bits=FIELD_FLAGS,
             network=network.settings.network,
-            reference_height=reference_height(network.settings, self.stations),
+            reference_height=reference_height(network.settings, network.stations),
             processing=describe_processing(network.settings),
         )
 
@@ -135,13 +147,16 @@ class DayWriter:
         return MapPainter(dataset, network_name=settings.network.name, limits=self.limits, **lines)
 
 
-def colour_limits(settings: Settings, stations: xr.Dataset) -> tuple[float, float]:
+def colour_limits(network: Network, first: int, last: int) -> tuple[float, float]:
     """Limits of the maps' colours [kg m-2]: a setting, or whole fives around the stations' values.
 
-    stations : of the period that is drawn
+    first, last : the steps of the period that is drawn
     """
+    settings = network.settings
     if settings.products.limits != "auto":
         return settings.products.limits
+    rows = np.unique(np.linspace(first, last - 1, STEPS_FOR_LIMITS).round().astype(int))
+    stations = retrieve_water_vapour(network, rows)
     used = stations.pwv.values[stations.flag.values == 0]
     if not len(used):
         return LIMITS_WITHOUT_DATA

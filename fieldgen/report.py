@@ -6,7 +6,7 @@ import json
 import platform
 import sys
 from collections import Counter
-from dataclasses import asdict, dataclass
+from dataclasses import dataclass
 from importlib.metadata import version
 from pathlib import Path
 
@@ -19,6 +19,9 @@ from fieldgen.products.metadata import fieldgen_version
 from fieldgen.readers.network import Network, ReadingReport
 from fieldgen.station.screening import STATION_FLAGS
 from fieldgen.station.surface_air import PRESSURE_SOURCES
+
+HECTOPASCAL_PER_METRE = 0.12
+"""Fall of pressure with height near sea level."""
 
 LIBRARIES = ("numpy", "scipy", "xarray", "netCDF4", "rasterio", "pyproj")
 
@@ -35,7 +38,10 @@ class DayReport:
     leave_one_out: dict
     values_clipped: int
     pressure_sources: dict[str, int]
-    stations: dict[str, dict]
+    barometers_rejected: dict[str, dict]
+    steps_used: list[int]
+    """Of each station of the run, in its order."""
+    rejected: dict[str, dict[str, int]]
     files: list[str]
 
 
@@ -53,7 +59,9 @@ def report_day(name: str, day: Day, fields: Fields, files: list[str]) -> DayRepo
             source: int((day.stations.pressure_source.values == code).sum())
             for source, code in PRESSURE_SOURCES.items()
         },
-        stations=_stations(day),
+        barometers_rejected=_barometers(day),
+        steps_used=(day.stations.flag.values == 0).sum(axis=0).tolist(),
+        rejected=_rejected(day),
         files=files,
     )
 
@@ -89,15 +97,31 @@ def _leave_one_out(day: Day) -> dict:
     }
 
 
-def _stations(day: Day) -> dict[str, dict]:
-    """Hours used and hours rejected by reason, by station; a value may have several reasons."""
+def _barometers(day: Day) -> dict[str, dict]:
+    """Steps and median difference [hPa] of the barometers that the others contradict."""
+    rejected = day.stations.barometer_rejected.values
+    residual = day.stations.barometer_residual.values
+    return {
+        str(day.stations.site.values[index]): {
+            "steps": int(rejected[:, index].sum()),
+            "difference": round(float(np.median(residual[rejected[:, index], index])), 1),
+        }
+        for index in np.flatnonzero(rejected.any(axis=0))
+    }
+
+
+def _rejected(day: Day) -> dict[str, dict[str, int]]:
+    """Steps rejected by reason, of the stations that lost any; a value may have several reasons."""
     flags = day.stations.flag.values
     return {
-        str(station): {"used": int((column == 0).sum())}
-        | {name: count for name, bit in STATION_FLAGS.items()
-           if (count := int(((column & bit) > 0).sum()))}
+        str(station): {
+            name: count
+            for name, bit in STATION_FLAGS.items()
+            if (count := int(((column & bit) > 0).sum()))
+        }
         for station, column in zip(day.stations.station.values, flags.T, strict=True)
-    }  # fmt: skip
+        if column.any()
+    }
 
 
 @dataclass(frozen=True)
@@ -105,6 +129,7 @@ class RunReport:
     """A run: what it read and the reports of its days."""
 
     settings: dict
+    stations: list[str]
     reading: ReadingReport
     days: list[DayReport]
     folder: Path
@@ -113,7 +138,8 @@ class RunReport:
     def of(cls, network: Network, folder: Path, days: list[DayReport]) -> RunReport:
         """Report of a finished run."""
         settings = network.settings.model_dump(mode="json", exclude={"folder"})
-        return cls(settings, network.report, days, folder)
+        stations = [str(station) for station in network.stations.station.values]
+        return cls(settings, stations, network.report, days, folder)
 
     def as_dict(self) -> dict:
         """The content of run.json."""
@@ -124,7 +150,9 @@ class RunReport:
             "command": sys.argv[1:],
             "settings": self.settings,
             "read": reading_as_dict(self.reading),
-            "days": [asdict(day) for day in self.days],
+            "stations": self.stations,
+            "days": [vars(day) for day in self.days],
+            "warnings": self.barometer_warnings(),
             "summary": self.totals(),
         }
 
@@ -146,12 +174,30 @@ class RunReport:
         }
 
     def station_totals(self) -> dict[str, Counter]:
-        """Hours used and rejected by reason over the run, by station."""
-        totals: dict[str, Counter] = {}
+        """Steps used and rejected by reason over the run, by station."""
+        used = np.sum([day.steps_used for day in self.days], axis=0)
+        totals = {
+            station: Counter(used=int(steps))
+            for station, steps in zip(self.stations, used, strict=True)
+        }
         for day in self.days:
-            for station, counts in day.stations.items():
-                totals.setdefault(station, Counter()).update(counts)
+            for station, counts in day.rejected.items():
+                totals[station].update(counts)
         return totals
+
+    def barometer_warnings(self) -> list[str]:
+        """One line for each barometer that the others contradicted."""
+        found: dict[str, list[dict]] = {}
+        for day in self.days:
+            for site, counts in day.barometers_rejected.items():
+                found.setdefault(site, []).append(counts)
+        return [
+            f"barometer {site}: not used in {sum(one['steps'] for one in counts)} steps, where it "
+            f"reads {(worst := max((one['difference'] for one in counts), key=abs)):+.1f} hPa "
+            f"against the others, as if its listed height were wrong by "
+            f"{abs(worst) / HECTOPASCAL_PER_METRE:.0f} m"
+            for site, counts in found.items()
+        ]
 
     def write(self, path: Path) -> None:
         """Write run.json, whole or not at all."""

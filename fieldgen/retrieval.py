@@ -30,21 +30,22 @@ CONSTANT_FACTOR_SIGMA = 0.025
 """Relative standard error of a constant conversion factor: Pi runs from 0.146 to 0.165 between
 Tm of 255 and 290 K."""
 
-SUSPICIOUS_CLIMB = 50.0
-"""An antenna this much [m] above or below its own barometer is reported."""
 
+def retrieve_water_vapour(network: Network, rows=slice(None)) -> xr.Dataset:
+    """Water vapour of every station and step, Dataset (time, station).
 
-def retrieve_water_vapour(network: Network) -> xr.Dataset:
-    """Water vapour of every station and hour, Dataset (time, station).
+    rows : slice or indices of the steps, by default all; a station's median formal error and the
+        running median are those of these steps
 
     ztd, ztd_sigma, zhd, zwd [m], pressure [hPa], pressure_source, mean_temperature [K], pwv,
     pwv_sigma, pwv_independent_sigma [kg m-2] and flag, zero where the value passes every test on
     its own series; common_sigma [kg m-2] and common_relative_sigma by time, what the stations'
-    errors have in common; with the stations' places. Odd barometers and heights are added to
-    ``network.report``.
+    errors have in common; barometer_residual (time, site) [hPa] against the others, and
+    barometer_rejected where it is too large; with the stations' places.
     """
-    settings, stations, delays = network.settings, network.stations, network.delays
-    air = _air_at_antennas(network)
+    settings, stations = network.settings, network.stations
+    delays, weather = network.delays.isel(time=rows), network.weather.isel(time=rows)
+    air, barometers = _air_at_antennas(settings, stations, weather)
     sigma = _realistic_ztd_sigma(delays.ztd_sigma.values, settings.retrieval)
     zhd = hydrostatic_delay(
         air.pressure, stations.latitude.values, stations.orthometric_height.values
@@ -66,7 +67,9 @@ def retrieve_water_vapour(network: Network) -> xr.Dataset:
     }  # fmt: skip
     series = {name: (("time", "station"), values) for name, values in variables.items()}
     common = _common_sigma_by_hour(pwv, constant, relative_sigma)
-    return stations.assign(series | common).assign_coords(time=delays.time)
+    return stations.assign(series | common | barometers).assign_coords(
+        time=delays.time, site=weather.site
+    )
 
 
 def _given_sigma(delays: xr.Dataset, factor, settings: RetrievalTable):
@@ -85,62 +88,32 @@ def _common_sigma_by_hour(pwv, constant, relative):
     }
 
 
-def _air_at_antennas(network: Network) -> SurfaceAir:
-    settings, weather = network.settings, network.weather
-    barometers = Sites(
-        weather.longitude.values, weather.latitude.values, weather.orthometric_height.values
-    )
-    antennas = Sites(
-        network.stations.longitude.values,
-        network.stations.latitude.values,
-        network.stations.orthometric_height.values,
-    )
-    own = own_barometer(antennas, barometers, settings.retrieval.barometer_distance)
-    _report_climbs(network, barometers, antennas, own)
+def _air_at_antennas(settings: Settings, stations: xr.Dataset, weather: xr.Dataset):
+    """Air at the antennas, and what the barometers' test against each other found."""
+    barometers, antennas = sites_of(weather), sites_of(stations)
     measured = Weather(
         weather.pressure.values, weather.temperature.values, weather.relative_humidity.values
     )
-    return surface_air(
-        _screened(measured, barometers, network),
+    sigma = settings.retrieval.barometer_sigma
+    rejected, residual = screen_barometers(
+        measured, barometers, sigma, settings.screening.pressure_difference
+    )
+    air = surface_air(
+        measured._replace(pressure=np.where(rejected, np.nan, measured.pressure)),
         barometers,
         antennas,
-        own,
-        barometer_sigma=settings.retrieval.barometer_sigma,
+        own_barometer(antennas, barometers, settings.retrieval.barometer_distance),
+        barometer_sigma=sigma,
         sources=settings.retrieval.pressure,
     )
+    found = {"barometer_rejected": rejected, "barometer_residual": residual}
+    return air, {name: (("time", "site"), values) for name, values in found.items()}
 
 
-def _screened(measured: Weather, barometers: Sites, network: Network) -> Weather:
-    """Weather without the pressures that the other barometers contradict."""
-    if not len(barometers.height):
-        return measured
-    settings, report = network.settings, network.report
-    limit = settings.screening.pressure_difference
-    rejected, residuals = screen_barometers(
-        measured, barometers, settings.retrieval.barometer_sigma, limit
-    )
-    for index in np.flatnonzero(rejected.any(axis=0)):
-        site = network.weather.site.values[index]
-        count = int(rejected[:, index].sum())
-        report.rejections.counts[f"barometer {site}", "pressure contradicts the others"] += count
-        if count > 0.5 * np.isfinite(measured.pressure[:, index]).sum():
-            difference = np.nanmedian(residuals[rejected[:, index], index])
-            report.warnings.append(
-                f"barometer {site}: reads {difference:+.1f} hPa against the others, as if its "
-                f"listed height were wrong by {abs(difference) / 0.12:.0f} m; it is not used"
-            )
-    return measured._replace(pressure=np.where(rejected, np.nan, measured.pressure))
-
-
-def _report_climbs(network: Network, barometers: Sites, antennas: Sites, own) -> None:
-    for index in np.flatnonzero(own >= 0):
-        climb = antennas.height[index] - barometers.height[own[index]]
-        if abs(climb) > SUSPICIOUS_CLIMB:
-            network.report.warnings.append(
-                f"station {network.stations.station.values[index]}: its antenna is listed "
-                f"{climb:+.0f} m from its own barometer "
-                f"{network.weather.site.values[own[index]]}; one of the two heights is wrong"
-            )
+def sites_of(dataset: xr.Dataset) -> Sites:
+    """Places of the stations or barometers of a dataset."""
+    names = ("longitude", "latitude", "orthometric_height")
+    return Sites(*(dataset[name].values for name in names))
 
 
 def _realistic_ztd_sigma(formal, settings: RetrievalTable):

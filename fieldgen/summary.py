@@ -12,6 +12,9 @@ from fieldgen.report import DayReport, RunReport
 from fieldgen.station.screening import STATION_FLAGS
 from fieldgen.text_table import new_table, render
 
+DAYS_SHOWN = 10
+"""Days before the last ones stand in run.json alone."""
+
 WARNINGS_SHOWN = 8
 """Further warnings are counted; all of them stand in run.json."""
 
@@ -21,6 +24,7 @@ def format_run(run: RunReport) -> str:
     totals = run.totals()
     parts = [
         _format_reading(run.reading),
+        "\n".join(f"warning   {text}" for text in run.barometer_warnings()),
         _render(_station_table(run)),
         _render(_day_table(run.days)),
         _format_totals(totals),
@@ -88,10 +92,10 @@ def _day_table(days: list[DayReport]) -> Table:
         "range [km]",
         "nugget",
         "LOO RMSE",
-        "note",
+        "model",
         left=("note",),
     )
-    for day in days:
+    for day in days[-DAYS_SHOWN:]:
         covariance = day.covariance or {}
         table.add_row(
             day.name,
@@ -99,7 +103,7 @@ def _day_table(days: list[DayReport]) -> Table:
             _span(day.scale_height),
             *(_number(covariance.get(key)) for key in ("partial_sill", "range", "nugget")),
             _number(_rmse(day)),
-            covariance.get("note", "too few stations"),
+            _model_note(covariance),
         )
     return table
 

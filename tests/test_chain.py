@@ -138,7 +138,8 @@ def test_the_report_says_what_happened(tmp_path):
     make(fieldgen.read_network(path), tmp_path / "out")
     report = json.loads((tmp_path / "out/run.json").read_text())
     assert report["summary"]["steps_made"] == 6
-    assert report["days"][0]["stations"]["ST03"] == {"used": 5, "no_delay": 1}
+    assert report["days"][0]["rejected"] == {"ST03": {"no_delay": 1}}
+    assert report["days"][0]["steps_used"][report["stations"].index("ST03")] == 5
     assert report["read"]["rejected"][0]["count"] == 1
     assert "delays.csv, line 5" in report["read"]["rejected_examples"][0]
 
@@ -156,9 +157,9 @@ def test_a_station_that_is_biased_is_not_used(tmp_path):
     (tmp_path / "delays.csv").write_text("\n".join(lines))
     make(fieldgen.read_network(path), tmp_path / "out")
     report = json.loads((tmp_path / "out/run.json").read_text())
-    stations = report["days"][0]["stations"]
-    assert stations["ST05"]["used"] == 0
-    assert all(counts["used"] == 12 for name, counts in stations.items() if name != "ST05")
+    used = dict(zip(report["stations"], report["days"][0]["steps_used"], strict=True))
+    assert used.pop("ST05") == 0
+    assert set(used.values()) == {12}
 
 
 @pytest.mark.parametrize(

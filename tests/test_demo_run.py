@@ -79,18 +79,19 @@ def test_height_handling_is_worth_it(network, fields, truth):
 
 def test_planted_faults_are_found(network, fields):
     """Planted: the station listed 82 m too high is not used; the gross errors are rejected."""
-    from fieldgen.analysis import analyse_day
-    from fieldgen.retrieval import retrieve_water_vapour
+    from fieldgen.day_maker import DayMaker
+    from fieldgen.period import Piece
     from fieldgen.station.screening import STATION_FLAGS
 
     faults = json.loads((DEMO / "truth/faults.json").read_text())
-    stations = analyse_day(network.settings, retrieve_water_vapour(network), 24, 48).stations
+    day = DayMaker(network).analyse(Piece("20260909", 24, 48))
+    stations = day.stations
     wrong = stations.sel(station=faults["wrong_height"]["station"])
     assert ((wrong.flag.values & STATION_FLAGS["condemned"]) > 0).all()
     assert any(faults["wrong_height"]["station"] in text for text in network.report.warnings)
     spiky = faults["gross_errors"]["station"]
     rejected = network.report.rejections.counts
-    assert rejected[f"station {spiky}", "spike within the hour"] >= 8
+    assert rejected[f"station {spiky}", "spike within the step"] >= 8
     good = stations.drop_sel(station=[wrong.station.item(), spiky])
     has_value = np.isfinite(good.pwv.values)
     assert (good.flag.values[has_value] != 0).mean() < 0.005

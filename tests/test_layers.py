@@ -22,7 +22,8 @@ LAYERS = [
     ["fields"],
     ["report"],
     ["day_maker"],
-    ["chain", "summary", "progress"],
+    ["chain", "summary", "progress", "text_table", "scoring"],
+    ["comparing"],
     ["cli"],
 ]
 """From the bottom to the top; a module may import its own layer and those below."""

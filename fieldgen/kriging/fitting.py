@@ -15,7 +15,7 @@ import numpy as np
 from scipy.optimize import minimize
 
 from fieldgen.kriging.covariance import MODELS, Covariance, distances
-from fieldgen.kriging.places import Places
+from fieldgen.kriging.places import Places, determine_drift
 from fieldgen.kriging.solver import Gaps, Kriging
 
 
@@ -109,14 +109,17 @@ def fit_covariance(
     median distance of nearest stations and three times the network's diameter. Falls back to the
     expectation, and says so in `note`, where fewer than eight stations report.
     """
-    enough = np.isfinite(values).sum(axis=1) >= MINIMUM_STATIONS
-    hours = np.flatnonzero(enough)
-    if not len(hours):
+    used = _spread(len(stations.lift), STATIONS_USED)
+    values, error_variance, stations = values[:, used], error_variance[used], stations[used]
+    hours = [
+        hour
+        for hour, present in enumerate(np.isfinite(values))
+        if present.sum() >= MINIMUM_STATIONS and determine_drift(stations, present)
+    ]
+    if not hours:
         note = f"fewer than {MINIMUM_STATIONS} stations in every hour: usual covariance"
         return CovarianceFit(usual_covariance(model, profile=profile), False, note)
-    hours = hours[_spread(len(hours), HOURS_USED)]
-    used = _spread(len(stations.lift), STATIONS_USED)
-    values, error_variance, stations = values[hours][:, used], error_variance[used], stations[used]
+    values = values[np.array(hours)[_spread(len(hours), HOURS_USED)]]
     start = near or usual_covariance(model, profile=profile)
     names = list(MODELS) if model == AUTO and near is None else [start.model]
     fits = []

@@ -52,6 +52,14 @@ class PlaceMaker:
         return Places(positions, functions, np.broadcast_to(lift, len(positions)))
 
 
+def determine_drift(places: Places, present) -> bool:
+    """Whether the places present (n,) bool determine every drift function."""
+    functions = places.drift[present]
+    return len(functions) > functions.shape[1] and (
+        np.linalg.matrix_rank(functions) == functions.shape[1]
+    )
+
+
 def _tangent_axes(origin):
     """Unit vectors (3, 2) to the east and north of a position."""
     up = origin / np.linalg.norm(origin)

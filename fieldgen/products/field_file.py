@@ -105,9 +105,8 @@ def _pwv_attributes() -> dict:
             "ancillary_variables": "pwv_sigma flag",
             "cell_methods": "time: mean area: mean",
             "comment": "1 kg m-2 is 1 mm of liquid water. The standard error counts what all cells "
-            "share, sqrt(common_sigma^2 + (common_relative_sigma pwv)^2), and a mean over cells does "
-            "not make that smaller.",
-        }
+        "share, sqrt(common_sigma^2 + (common_relative_sigma pwv)^2), too.",
+    }
     )
 
 

@@ -36,7 +36,7 @@ def station_dataset(
     stations : of `analysis.Day`, dimensions time, station
     """
     time = stations.time.values
-    turned = stations.transpose("station", "time")
+    turned = stations.drop_dims("site").transpose("station", "time")
     dataset = xr.Dataset(coords=_coordinates(turned, time, network.time_step))
     for name, dtype in _SERIES.items():
         dataset[name] = (("station", "time"), turned[name].values, QUANTITIES[name].attributes())

@@ -14,8 +14,8 @@ from fieldgen.errors import InputError
 from fieldgen.ground.grid import Grid, read_grid
 from fieldgen.ground.terrain import Terrain, read_terrain
 from fieldgen.readers.formats import read_delays, read_weather
-from fieldgen.readers.places import locate_sites, locate_stations
-from fieldgen.readers.records import DelayRecords, ReadingReport
+from fieldgen.readers.places import locate_sites, locate_stations, report_climbs
+from fieldgen.readers.records import DelayRecords, ReadingReport, WeatherRecords
 from fieldgen.readers.tables import StationRow, read_station_table
 from fieldgen.readers.time_grid import TimeGrid, spikes, step_means
 from fieldgen.settings import Settings, read_settings
@@ -56,6 +56,7 @@ def read_network(path: str | Path, progress: Callable[[str], None] = lambda file
     table = _read_table(settings, report)
     stations = locate_stations(settings, grid, delays, table, report)
     sites = locate_sites(settings, weather, stations, report)
+    report_climbs(settings, stations, sites, report)
     time = _time_grid(settings, delays)
     return Network(
         settings=settings,
@@ -63,7 +64,7 @@ def read_network(path: str | Path, progress: Callable[[str], None] = lambda file
         terrain=terrain,
         stations=stations,
         delays=_grid_delays(settings, delays, stations, time, report),
-        weather=_grid_weather(weather, sites, time, report),
+        weather=_grid_weather(weather, sites, time),
         report=report,
     )
 
@@ -108,6 +109,7 @@ def _read_files(settings: Settings, kind: str, read, report: ReadingReport, prog
         report.files[name] = len(records.time)
         report.rejections.merge(records.rejections)
         report.warnings.extend(records.warnings)
+        records.compact()
         yield records
     if files and not used:
         raise InputError(
@@ -141,72 +143,55 @@ def _time_grid(settings: Settings, delays: list[DelayRecords]) -> TimeGrid:
 def _grid_delays(
     settings: Settings, delays, stations: xr.Dataset, time: TimeGrid, report: ReadingReport
 ) -> xr.Dataset:
+    """Step means of all delays; the records are let go station by station."""
     ids = list(stations.station.values)
-    column = _columns(delays, "station_ids", "station", ids)
-    epoch = np.concatenate([records.time for records in delays])
-    values = {
-        name: np.concatenate([getattr(records, name) for records in delays])
-        for name in ("ztd", "ztd_sigma", "pwv", "pwv_sigma")
-    }
-    known = column >= 0
-    column, epoch = column[known], epoch[known]
-    values = {name: value[known] for name, value in values.items()}
-    keep = _drop_duplicates(column, epoch, report)
-    column, epoch = column[keep], epoch[keep]
-    values = {name: value[keep] for name, value in values.items()}
-    spike = spikes(column, epoch, values["ztd"], time.step, settings.screening.spike)
-    _count_spikes(column[spike], ids, report)
-    for name in ("ztd", "ztd_sigma"):
-        values[name][spike] = np.nan
+    names = DelayRecords.values
+    gridded = {name: np.full((len(time.stamps), len(ids)), np.nan) for name in names}
+    doubled = 0
+    for column, station in enumerate(ids):
+        epoch, values = _series(delays, station)
+        keep = _last_of_each(epoch)
+        doubled += len(epoch) - len(keep)
+        epoch, values = epoch[keep], {name: values[name][keep] for name in names}
+        spike = spikes(epoch, values["ztd"], time.step, settings.screening.spike)
+        if spike.any():
+            report.rejections.counts[f"station {station}", "spike within the step"] += spike.sum()
+        for name in names:
+            used = values[name] if name.startswith("pwv") else np.where(spike, np.nan, values[name])
+            gridded[name][:, column] = step_means(epoch, used, time)
+    if doubled:
+        report.warnings.append(
+            f"{doubled} delays stand in more than one file; the file read last is used"
+        )
     return xr.Dataset(
-        {
-            name: (("time", "station"), step_means(column, epoch, value, time, len(ids)))
-            for name, value in values.items()
-        },
+        {name: (("time", "station"), values) for name, values in gridded.items()},
         coords={"time": time.stamps.astype("datetime64[ns]"), "station": stations.station},
-        attrs={"time_step_seconds": int(time.step.astype(int))},
     )
 
 
-def _columns(tables, ids_name: str, index_name: str, ids: list[str]):
-    """Column of each record of all tables in the order of `ids`; -1 where it is not among them."""
-    position = {name: i for i, name in enumerate(ids)}
-    parts = [
-        np.array([position.get(name, -1) for name in getattr(table, ids_name)], int)[
-            getattr(table, index_name)
-        ]
-        for table in tables
-    ]
-    return np.concatenate(parts) if parts else np.zeros(0, int)
+def _series(tables, identifier: str):
+    """Epochs (n,) and values by name (n,) of one station or site from all tables that hold it."""
+    parts = [table.series(identifier) for table in tables if identifier in table.identifiers]
+    epoch = np.concatenate([times for times, _ in parts])
+    names = parts[0][1]
+    return epoch, {name: np.concatenate([values[name] for _, values in parts]) for name in names}
 
 
-def _drop_duplicates(column, epoch, report: ReadingReport):
-    """Indices of the records to keep, of each station and epoch the one read last."""
-    order = np.lexsort((epoch, column))  # stable: equal keys stay in the order of reading
+def _last_of_each(epoch):
+    """Indices of the records to keep, of each epoch the one read last."""
+    order = np.argsort(epoch, kind="stable")
     last = np.ones(len(order), bool)
-    same = (np.diff(column[order]) == 0) & (np.diff(epoch[order]).astype(int) == 0)
-    last[:-1] = ~same
-    if same.any():
-        report.warnings.append(
-            f"{same.sum()} delays stand in more than one file; the file read last is used"
-        )
-    return np.sort(order[last])
+    last[:-1] = np.diff(epoch[order]).astype(int) > 0
+    return order[last]
 
 
-def _count_spikes(column, ids: list[str], report: ReadingReport) -> None:
-    for index, count in zip(*np.unique(column, return_counts=True), strict=True):
-        report.rejections.counts[f"station {ids[index]}", "spike within the hour"] += int(count)
-
-
-def _grid_weather(weather, sites: xr.Dataset, time: TimeGrid, report) -> xr.Dataset:
+def _grid_weather(weather, sites: xr.Dataset, time: TimeGrid) -> xr.Dataset:
     ids = list(sites.site.values)
-    column = _columns(weather, "site_ids", "site", ids)
-    known = column >= 0
-    empty = [np.zeros(0)]
-    epoch = np.concatenate([records.time for records in weather] or [np.zeros(0, "M8[s]")])
-    variables = {}
-    for name in ("pressure", "temperature", "relative_humidity"):
-        values = np.concatenate([getattr(records, name) for records in weather] or empty)
-        means = step_means(column[known], epoch[known], values[known], time, len(ids))
-        variables[name] = (("time", "site"), means)
+    names = WeatherRecords.values
+    gridded = {name: np.full((len(time.stamps), len(ids)), np.nan) for name in names}
+    for column, site in enumerate(ids):
+        epoch, values = _series(weather, site)
+        for name in names:
+            gridded[name][:, column] = step_means(epoch, values[name], time)
+    variables = {name: (("time", "site"), values) for name, values in gridded.items()}
     return sites.assign(variables).assign_coords(time=time.stamps.astype("datetime64[ns]"))

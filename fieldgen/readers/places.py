@@ -15,12 +15,16 @@ from fieldgen.kriging.covariance import chord_positions, distances
 from fieldgen.readers.records import DelayRecords, ReadingReport, Site, WeatherRecords
 from fieldgen.readers.tables import StationRow
 from fieldgen.settings import Settings
+from fieldgen.station.surface_air import Sites, own_barometer
 
 SAME_PLACE = 1.0
 """Two positions of one station further apart than this [km] are reported."""
 
 SAME_HEIGHT = 5.0
 """A listed orthometric height this far [m] from ellipsoidal - undulation is reported."""
+
+SUSPICIOUS_CLIMB = 50.0
+"""An antenna this much [m] above or below its own barometer is reported."""
 
 STATION_MARGIN = 2.0
 """Stations further outside the grid than this many times `kriging.far_distance` are left out."""
@@ -231,6 +235,25 @@ def locate_sites(
         },
         coords={"site": np.array(list(rows), dtype=object)},
     )
+
+
+def report_climbs(
+    settings: Settings, stations: xr.Dataset, sites: xr.Dataset, report: ReadingReport
+) -> None:
+    """Report antennas that are listed far above or below their own barometer."""
+    antennas, barometers = (
+        Sites(*(places[name].values for name in ("longitude", "latitude", "orthometric_height")))
+        for places in (stations, sites)
+    )
+    own = own_barometer(antennas, barometers, settings.retrieval.barometer_distance)
+    for index in np.flatnonzero(own >= 0):
+        climb = antennas.height[index] - barometers.height[own[index]]
+        if abs(climb) > SUSPICIOUS_CLIMB:
+            report.warnings.append(
+                f"station {stations.station.values[index]}: its antenna is listed {climb:+.0f} m "
+                f"from its own barometer {sites.site.values[own[index]]}; one of the two heights "
+                "is wrong"
+            )
 
 
 def _site_row(name: str, site: Site, stations: xr.Dataset) -> StationRow | None:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections import Counter
 from collections.abc import Callable
 from dataclasses import dataclass, field
+from typing import ClassVar
 
 import numpy as np
 
@@ -83,8 +84,39 @@ class Site:
     name: str = ""
 
 
+class _Records:
+    """What delays and weather have in common: records of several places, one after the other."""
+
+    places: ClassVar[tuple[str, str]]
+    """Names of the attributes that hold the identifiers and each record's index among them."""
+
+    values: ClassVar[tuple[str, ...]]
+    """Names of the attributes that hold measured values."""
+
+    @property
+    def identifiers(self) -> list[str]:
+        """Identifiers of the stations or sites."""
+        return getattr(self, self.places[0])
+
+    def series(self, identifier: str):
+        """Epochs (n,) and values by name (n,) of one station or site, in the order of the file."""
+        mine = getattr(self, self.places[1]) == self.identifiers.index(identifier)
+        return self.time[mine], {name: getattr(self, name)[mine] for name in self.values}
+
+    def compact(self) -> None:
+        """Hold the values in single precision, a ten-millionth of a delay, and what is absent not
+        at all: a year of records must fit in memory."""
+        index = self.places[1]
+        setattr(self, index, getattr(self, index).astype(np.int16))
+        for name in self.values:
+            values = getattr(self, name)
+            absent = np.isnan(values).all()
+            nothing = np.broadcast_to(np.float32(np.nan), values.shape)
+            setattr(self, name, nothing if absent else values.astype(np.float32))
+
+
 @dataclass
-class DelayRecords:
+class DelayRecords(_Records):
     """Delays of one file, one element a record, in the order of the file.
 
     station : (n,) int, index into `station_ids`
@@ -95,6 +127,9 @@ class DelayRecords:
     sites : where the file says its stations are, by identifier
     warnings : oddities of the file that cost no line, one sentence each
     """
+
+    places: ClassVar = ("station_ids", "station")
+    values: ClassVar = ("ztd", "ztd_sigma", "pwv", "pwv_sigma")
 
     file: str
     station_ids: list[str]
@@ -111,7 +146,7 @@ class DelayRecords:
 
 
 @dataclass
-class WeatherRecords:
+class WeatherRecords(_Records):
     """Surface weather of one file, one element a record, in the order of the file.
 
     site : (n,) int, index into `site_ids`
@@ -119,6 +154,9 @@ class WeatherRecords:
     pressure [hPa], temperature [K], relative_humidity [%] : (n,), NaN where not given
     sites : where the file says its barometers are, by identifier
     """
+
+    places: ClassVar = ("site_ids", "site")
+    values: ClassVar = ("pressure", "temperature", "relative_humidity")
 
     file: str
     site_ids: list[str]

@@ -52,25 +52,20 @@ def _step_number(times, step):
     return -(-seconds // step.astype("timedelta64[s]").astype(np.int64))
 
 
-def step_means(column, time, values, grid: TimeGrid, columns: int):
-    """Means (steps, columns) of records' values, NaN where a step has none.
+def step_means(time, values, grid: TimeGrid):
+    """Means (steps,) of records' values, NaN where a step has none.
 
-    column : (n,) int, the station or site of each record
-    time : (n,) datetime64[s]; records outside the grid are left out
-    values : (n,) float, NaN where missing
+    time (n,) datetime64[s]; records outside the grid are left out; values (n,), NaN where missing
     """
-    cell = grid.index(time) * columns + column
-    size = len(grid.stamps) * columns
-    used = (cell >= 0) & (cell < size) & np.isfinite(values)
-    count = np.bincount(cell[used], minlength=size)
-    total = np.bincount(cell[used], weights=values[used], minlength=size)
-    mean = np.full(size, np.nan)
-    np.divide(total, count, out=mean, where=count > 0)
-    return mean.reshape(len(grid.stamps), columns)
+    step, size = grid.index(time), len(grid.stamps)
+    used = (step >= 0) & (step < size) & np.isfinite(values)
+    count = np.bincount(step[used], minlength=size)
+    total = np.bincount(step[used], weights=values[used], minlength=size)
+    return np.divide(total, count, out=np.full(size, np.nan), where=count > 0)
 
 
-def spikes(column, time, values, step: np.timedelta64, limit: float):
-    """Records (n,) bool that lie further than `limit` from the median of their own step.
+def spikes(time, values, step: np.timedelta64, limit: float):
+    """Records (n,) bool of one station that lie further than `limit` from their step's median.
 
     Steps of one or two records have no majority and mark nothing.
     """
@@ -79,14 +74,11 @@ def spikes(column, time, values, step: np.timedelta64, limit: float):
     if not len(usable):
         return marked
     number = _step_number(time[usable], step)
-    order = usable[np.lexsort((values[usable], number, column[usable]))]
-    number = _step_number(time[order], step)
-    new_group = (np.diff(number, prepend=number[0] - 1) != 0) | (
-        np.diff(column[order], prepend=-1) != 0
-    )
-    first = np.flatnonzero(new_group)
-    size = np.diff(first, append=len(order))
-    low, high = values[order[first + (size - 1) // 2]], values[order[first + size // 2]]
+    order = np.lexsort((values[usable], number))
+    usable, number = usable[order], number[order]
+    first = np.flatnonzero(np.diff(number, prepend=number[0] - 1))
+    size = np.diff(first, append=len(number))
+    low, high = values[usable[first + (size - 1) // 2]], values[usable[first + size // 2]]
     median, size = np.repeat((low + high) / 2.0, size), np.repeat(size, size)
-    marked[order] = (size > 2) & (np.abs(values[order] - median) > limit)
+    marked[usable] = (size > 2) & (np.abs(values[usable] - median) > limit)
     return marked

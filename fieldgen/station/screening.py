@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from fieldgen.kriging.places import determine_drift
 from fieldgen.kriging.solver import Kriging
 
 STATION_FLAGS = {
@@ -70,7 +71,9 @@ def disagreements(
     """
     values = values.copy()
     gone = np.zeros(len(values), bool)
-    while np.isfinite(values).sum() > minimum:
+    while np.isfinite(values).sum() > minimum and determine_drift(
+        kriging.stations, np.isfinite(values)
+    ):
         residual, sigma = kriging.leave_one_out(values, kriging.gaps(np.isnan(values), excess))
         standardised = np.abs(residual) / sigma
         suspect = (np.abs(residual) > difference) & (standardised > ratio)

@@ -147,10 +147,12 @@ def screen_barometers(weather: Weather, barometers: Sites, barometer_sigma: floa
     Returns rejected (t, s) bool and the residuals (t, s) [hPa] of leaving each barometer out.
     The worst barometer of an hour goes first, so that it does not condemn its neighbours.
     """
+    rejected = np.zeros(weather.pressure.shape, bool)
+    residuals = np.full(weather.pressure.shape, np.nan)
+    if not len(barometers.height):
+        return rejected, residuals
     level = barometers.height.mean()
     at_level, error = pressure_at_level(weather, barometers, level, barometer_sigma)
-    rejected = np.zeros(at_level.shape, bool)
-    residuals = np.full(at_level.shape, np.nan)
     kriging = _kriging(PRESSURE_COVARIANCE, np.nanmean(error, axis=0), barometers, "constant")
     for hour, values in enumerate(at_level):
         values = values.copy()
