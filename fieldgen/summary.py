@@ -93,7 +93,7 @@ def _day_table(days: list[DayReport]) -> Table:
         "nugget",
         "LOO RMSE",
         "model",
-        left=("note",),
+        left=("model",),
     )
     for day in days[-DAYS_SHOWN:]:
         covariance = day.covariance or {}
@@ -106,6 +106,12 @@ def _day_table(days: list[DayReport]) -> Table:
             _model_note(covariance),
         )
     return table
+
+
+def _model_note(covariance: dict) -> str:
+    if not covariance:
+        return "too few stations"
+    return ", ".join(text for text in (covariance["model"], covariance["note"]) if text)
 
 
 def _span(scale_height: dict | None) -> str:
