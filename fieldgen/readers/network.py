@@ -155,7 +155,9 @@ def _grid_delays(
         epoch, values = epoch[keep], {name: values[name][keep] for name in names}
         spike = spikes(epoch, values["ztd"], time.step, settings.screening.spike)
         if spike.any():
-            report.rejections.counts[f"station {station}", "spike within the step"] += spike.sum()
+            report.rejections.counts[f"station {station}", "spike within the step"] += int(
+                spike.sum()
+            )
         for name in names:
             used = values[name] if name.startswith("pwv") else np.where(spike, np.nan, values[name])
             gridded[name][:, column] = step_means(epoch, used, time)
