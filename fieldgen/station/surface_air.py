@@ -153,7 +153,7 @@ def screen_barometers(weather: Weather, barometers: Sites, barometer_sigma: floa
         return rejected, residuals
     level = barometers.height.mean()
     at_level, error = pressure_at_level(weather, barometers, level, barometer_sigma)
-    kriging = _kriging(PRESSURE_COVARIANCE, np.nanmean(error, axis=0), barometers, "constant")
+    kriging = _kriging(PRESSURE_COVARIANCE, _usual(error), barometers, "constant")
     for hour, values in enumerate(at_level):
         values = values.copy()
         while np.isfinite(values).sum() >= 3:
@@ -224,7 +224,7 @@ def _neighbours_pressure(weather, barometers, antennas, own, temperature, barome
     field, variance = _krige_hours(
         PRESSURE_COVARIANCE,
         at_level[known],
-        np.nan_to_num(np.nanmean(error, axis=0), nan=barometer_sigma**2),
+        _usual(error),
         barometers,
         antennas,
         drift,
@@ -239,10 +239,18 @@ def _neighbours_pressure(weather, barometers, antennas, own, temperature, barome
     return pressure, sigma
 
 
+def _usual(error_variance):
+    """Mean over the hours (s,) of error variances (t, s); one where a barometer is silent."""
+    known = np.isfinite(error_variance)
+    total = np.where(known, error_variance, 0.0).sum(axis=0)
+    count = known.sum(axis=0)
+    return np.where(count > 0, total / np.maximum(count, 1), 1.0)
+
+
 def _kriging(covariance, error_variance, sources: Sites, drift: str) -> Kriging:
     maker = PlaceMaker(sources.longitude, sources.latitude, drift)
     places = maker.places(sources.longitude, sources.latitude)
-    return Kriging(covariance, places, np.nan_to_num(error_variance, nan=1.0))
+    return Kriging(covariance, places, error_variance)
 
 
 def _krige_hours(covariance, values, error_variance, sources: Sites, targets: Sites, drift):
