@@ -14,6 +14,7 @@ import xarray as xr
 
 from fieldgen.kriging.covariance import Covariance
 from fieldgen.kriging.fitting import (
+    AUTO,
     CovarianceFit,
     ScaleHeight,
     fit_covariance,
@@ -174,19 +175,25 @@ def _model_window(settings: Settings, window: Window):
     present = np.isfinite(window.pwv)
     trusted, model = present, None
     for _ in range(ROUNDS):
-        model = _fit_model(settings, window, trusted, model)
+        model = _fit_model(settings, window, trusted, model, _screening_model(settings.kriging))
         disagree, out = _screen(settings.screening, window, model)
         good = present & ~disagree & ~out
         if (good == trusted).all():
-            return model, disagree, out
+            break
         trusted = good
-    return _fit_model(settings, window, trusted, model), disagree, out
+    return _fit_model(settings, window, trusted, model, settings.kriging.covariance), disagree, out
 
 
-def _fit_model(settings: Settings, window: Window, trusted, last: Model | None) -> Model:
+def _screening_model(table: KrigingTable) -> str:
+    """Model to screen with: which one is likeliest can be told when the bad values are gone."""
+    return "exponential" if table.covariance == AUTO else table.covariance
+
+
+def _fit_model(settings: Settings, window: Window, trusted, last: Model | None, name: str) -> Model:
     """Covariance, then the scale heights of that covariance, then the values they reduce to.
 
     last : the model of the round before, where this one's search starts
+    name : of the covariance
     """
     prior = np.full(len(window.pwv), settings.heights.prior)
     values, variance = window.at_reference(prior)
@@ -198,6 +205,7 @@ def _fit_model(settings: Settings, window: Window, trusted, last: Model | None) 
         values / moisture[:, None],
         usual * np.mean(moisture**-2.0),
         window.places,
+        name,
         last and last.fit.covariance,
     )
     kriging = Kriging(fit.covariance, window.places, usual)
@@ -216,7 +224,12 @@ def _fit_model(settings: Settings, window: Window, trusted, last: Model | None) 
 
 
 def _fit_covariance(
-    table: KrigingTable, values, usual_variance, places: Places, near: Covariance | None
+    table: KrigingTable,
+    values,
+    usual_variance,
+    places: Places,
+    name: str,
+    near: Covariance | None,
 ) -> CovarianceFit:
     if table.partial_sill is not None:
         fixed = Covariance(
@@ -231,9 +244,7 @@ def _fit_covariance(
     if np.ptp(places.lift) > 0.0:  # each hour's scale height is not variability of the field
         places = places._replace(drift=np.column_stack([places.drift, places.lift]))
     profile = table.engine != "pykrige"  # its covariances depend on distance alone
-    return fit_covariance(
-        values, usual_variance, places, table.covariance, profile=profile, near=near
-    )
+    return fit_covariance(values, usual_variance, places, name, profile=profile, near=near)
 
 
 def _usual(variance):

@@ -52,7 +52,7 @@ AUTO = "auto"
 MINIMUM_STATIONS = 8
 """Fewer stations than this cannot tell a range from a sill."""
 
-HOURS_USED = 12
+HOURS_USED = 16
 """Neighbouring hours say nearly the same; this many, spread over the window, say it all."""
 
 STATIONS_USED = 80
@@ -103,7 +103,7 @@ def fit_covariance(
     model : a name of `MODELS`, or `AUTO`
     stations : Places of the n stations; what their drift explains does not count as variability
     profile : whether the profile may differ from the hour's exponential, see `Covariance`
-    near : a covariance of nearly the same values, whose model is kept and where the search starts
+    near : a covariance of nearly the same values, where the search starts
 
     Each parameter has the weak expectation of `EXPECTED`, and bounds; the range lies between the
     median distance of nearest stations and three times the network's diameter. Falls back to the
@@ -121,9 +121,10 @@ def fit_covariance(
         return CovarianceFit(usual_covariance(model, profile=profile), False, note)
     values = values[np.array(hours)[_spread(len(hours), HOURS_USED)]]
     start = near or usual_covariance(model, profile=profile)
-    names = list(MODELS) if model == AUTO and near is None else [start.model]
     fits = []
-    for name in names:  # their ranges mean the same, so each starts where the last one ended
+    for name in (
+        list(MODELS) if model == AUTO else [model]
+    ):  # their ranges mean the same, so each starts where the last one ended
         likelihood = RestrictedLikelihood(values, error_variance, stations, name, profile)
         fits.append(likelihood.maximise(fits[-1].covariance if fits else start))
     return max(fits, key=lambda fit: fit.log_likelihood)
@@ -171,7 +172,7 @@ class RestrictedLikelihood:
             jac=True,
             method="L-BFGS-B",
             bounds=list(zip(lower, upper, strict=True)),
-            options={"ftol": 1e-5},
+            options={"ftol": 1e-6},
         )
         at_bound = [
             name

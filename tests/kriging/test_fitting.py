@@ -57,7 +57,7 @@ def test_fit_covariance_recovers_what_the_field_was_drawn_from(model):
 
 def test_fit_covariance_tells_the_profile_from_the_field():
     """Analytic: with relief of 2 km the sills of slope and curvature come back within a factor of
-    two, their sampling spread with 16 hours of 60 stations; without relief they stay as expected."""
+    two, their sampling spread with 16 hours; without relief they stay as expected."""
     truth = Covariance("exponential", 6.0, 120.0, 0.3, 1.5, 0.8)
     stations = network(60, relief=2.0)
     values = simulate(truth, stations, 0.4, 48)

@@ -4,8 +4,8 @@ import numpy as np
 import pytest
 
 from fieldgen.kriging.covariance import Covariance
-from fieldgen.kriging.pykrige_engine import krige_with_pykrige
 from fieldgen.kriging.places import PlaceMaker
+from fieldgen.kriging.pykrige_engine import krige_with_pykrige
 from fieldgen.kriging.solver import Kriging, krige_hours
 
 COVARIANCE = Covariance("exponential", 9.0, 150.0, 0.4)
