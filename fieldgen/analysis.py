@@ -209,7 +209,7 @@ def _fit_model(settings: Settings, window: Window, trusted, last: Model | None, 
         last and last.fit.covariance,
     )
     kriging = Kriging(fit.covariance, window.places, usual)
-    scale, sigma = _fit_scale_heights(settings, window, kriging, values)
+    scale, sigma = _fit_scale_heights(settings, window, kriging, values, moisture)
     values, variance = window.at_reference(scale)
     values = np.where(trusted, values, np.nan)
     usual = _usual(variance)
@@ -252,8 +252,13 @@ def _usual(variance):
     return np.nanmedian(variance, axis=0)
 
 
-def _fit_scale_heights(settings: Settings, window: Window, kriging: Kriging, values):
-    """Scale height and its standard error (t,) [m], each hour from its own stations."""
+def _fit_scale_heights(settings: Settings, window: Window, kriging: Kriging, values, moisture):
+    """Scale height and its standard error (t,) [m], each hour from its own stations.
+
+    moisture (t,) : of each hour relative to the day. The field varies in proportion to it, so that
+    its logarithm varies alike in all hours, as in one of the day's mean.
+    """
+    mean = max(float(np.nanmean(values / moisture[:, None])), LEAST_MOISTURE)
     heights = settings.heights
     count = len(values)
     if heights.scale_height != "estimated":
@@ -272,7 +277,7 @@ def _fit_scale_heights(settings: Settings, window: Window, kriging: Kriging, val
             kriging.gaps(~trusted),
             np.where(trusted, water_vapour, np.nan),
             window.height,
-            max(float(np.nanmean(at_reference)), 1.0),
+            mean,
             prior,
         )
         found.append(measured)
@@ -327,14 +332,19 @@ def _screen(limits: ScreeningTable, window: Window, model: Model):
                 model.kriging,
                 row,
                 more,
-                ratio=limits.neighbour_ratio,
+                ratio=limits.neighbour_ratio * wider,
                 difference=limits.neighbour_difference,
                 minimum=MINIMUM_STATIONS,
             )
-            for row, more in zip(rest, model.excess, strict=True)
+            for row, more, wider in zip(rest, model.excess, _wider(model), strict=True)
         ]
     )
     return disagree, out | often_gone(disagree, np.isfinite(rest), limits.condemn_share)
+
+
+def _wider(model: Model):
+    """By how much a stormy hour's residuals (t,) may be larger: a front is no fault."""
+    return np.sqrt(np.maximum(model.variance_factor, 1.0))
 
 
 def _worst_station(limits: ScreeningTable, window: Window, model: Model, values) -> int | None:
@@ -399,7 +409,8 @@ def _residuals(model: Model, hour: int, at_reference):
     predicted = model.kriging.fill(gaps, values)
     own = np.zeros(len(values))
     own[gaps.changed] = np.sqrt(np.diag(gaps.update))
-    return np.array([np.where(out, at_reference - predicted, residual), np.where(out, own, sigma)])
+    sigma = np.where(out, own, sigma) * np.sqrt(model.variance_factor[hour])
+    return np.array([np.where(out, at_reference - predicted, residual), sigma])
 
 
 def _assign(stations: xr.Dataset, bits, residual, sigma) -> xr.Dataset:

@@ -20,14 +20,18 @@ from fieldgen.report import DayReport, RunReport
 def make_fields(network: Network, start: str | None = None, end: str | None = None) -> xr.Dataset:
     """Fields of a network's hours, the same Dataset as the field files hold.
 
-    start, end : ISO 8601 UTC, by default all hours of the input. Dimensions time, y, x; see
+    start, end : ISO 8601 UTC, by default all hours of the input; an hour comes out the same
+        whatever the period. Dimensions time, y, x; see
     `fieldgen.products.field_file.packed_dataset`. Hours with too few stations are NaN and flagged.
     Raises InputError if the period is reversed or holds no step of the input.
     """
     maker = DayMaker(network)
-    made = [maker.compute(piece) for piece in _pieces(network, start, end)]
-    time = np.concatenate([day.stations.time.values for day, _ in made])
-    return unpack_fields(maker.packed_dataset(time, join_fields([fields for _, fields in made])))
+    times, made = [], []
+    for piece in _pieces(network, start, end):
+        day, fields = maker.compute(piece)
+        times.append(day.stations.time.values[piece.asked])
+        made.append(fields.steps(piece.asked))
+    return unpack_fields(maker.packed_dataset(np.concatenate(times), join_fields(made)))
 
 
 def make(
@@ -41,6 +45,7 @@ def make(
 ) -> RunReport:
     """Field, station and map files of a period, written below `folder`, with run.json.
 
+    Every day that the period touches is made whole; maps are drawn of the period alone.
     jobs : processes that share the days; results do not depend on it
     progress : called with the name of each day when it is done, and the number of days
     Raises InputError if the period is empty, OutputError if the folder cannot be written.
@@ -59,7 +64,9 @@ def make(
 
 def _pieces(network: Network, start: str | None, end: str | None) -> list[Piece]:
     step = np.timedelta64(int(network.settings.network.time_step.total_seconds()), "s")
-    return pieces(network.delays.time.values, step, start, end)
+    delays = network.delays
+    has_data = np.isfinite(delays.ztd.values) | np.isfinite(delays.pwv.values)
+    return pieces(delays.time.values, step, has_data.any(axis=1), start, end)
 
 
 def _maps_by_day(maps: str, days: list[Piece]) -> list[str]:

@@ -152,9 +152,11 @@ def _positive(text: str) -> int:
 
 def _make(options: argparse.Namespace) -> int:
     from fieldgen.chain import make
+    from fieldgen.period import check_period
     from fieldgen.progress import Progress
     from fieldgen.summary import format_run
 
+    check_period(options.start, options.end)
     with Progress() as progress:
         network = _read(options.network, progress)
         folder = _product_folder(options, network)

@@ -19,7 +19,6 @@ GAS_CONSTANT_VAPOUR = Constant(461.5, "J kg-1 K-1", "Bevis et al. 1992, JGR 97, 
 WATER_DENSITY = Constant(1000.0, "kg m-3", "convention: 1 kg m-2 of water vapour is 1 mm")
 STANDARD_LAPSE_RATE = Constant(0.0065, "K m-1", "ICAO standard atmosphere, Doc 7488")
 ZHD_PER_HECTOPASCAL = Constant(0.0022768, "m hPa-1", "Davis et al. 1985, Radio Sci. 20, 1593")
-ZHD_COEFFICIENT_SIGMA = Constant(2.4e-6, "m hPa-1", "Davis et al. 1985, Radio Sci. 20, 1593")
 
 
 class Refractivity(NamedTuple):

@@ -121,15 +121,17 @@ class DayWriter:
         write_fields(dataset, paths[0])
         write_stations(stations, paths[1])
         if maps != "none":
-            paths += self._draw(dataset, stations, maps)
+            paths += self._draw(piece, dataset, stations, maps)
         files = [str(path.relative_to(self.folder)) for path in paths]
         return report_day(piece.name, day, fields, files)
 
-    def _draw(self, dataset: xr.Dataset, stations: xr.Dataset, maps: str) -> list[Path]:
+    def _draw(
+        self, piece: Piece, dataset: xr.Dataset, stations: xr.Dataset, maps: str
+    ) -> list[Path]:
         from fieldgen.products.maps import write_maps
 
-        if maps == "latest":
-            dataset, stations = dataset.isel(time=[-1]), stations.isel(time=[-1])
+        steps = [piece.asked.stop - 1] if maps == "latest" else piece.asked
+        dataset, stations = dataset.isel(time=steps), stations.isel(time=steps)
         dataset = unpack_fields(dataset)
         if self.painter is None:
             self.painter = self._make_painter(dataset)

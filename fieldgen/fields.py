@@ -33,6 +33,9 @@ FIELD_FLAGS = {
 UNUSABLE_SIGMA = 5.0
 """Standard error above which a value is not usable [kg m-2]: WMO OSCAR requirement 380."""
 
+HIGHEST = 320.0
+"""The highest value that can be packed [kg m-2], four times what air can hold on earth."""
+
 HEIGHT_TOLERANCE = 50.0
 """Terrain this far [m] beyond the highest or lowest station of the hour is extrapolated."""
 
@@ -51,7 +54,7 @@ class Fields:
     flag : (t, ny, nx) int8, bits of `FIELD_FLAGS`
     scale_height : (t,) [m], NaN where missing; station_count : (t,)
     common_sigma, common_relative_sigma : (t,) [kg m-2], [1] what the cells' errors share
-    clipped : cells and hours below zero, written as zero
+    clipped : cells and hours whose `pwv` was below zero, written as zero
     """
 
     pwv: np.ndarray
@@ -63,6 +66,13 @@ class Fields:
     common_sigma: np.ndarray
     common_relative_sigma: np.ndarray
     clipped: int = 0
+
+    def steps(self, rows: slice) -> Fields:
+        """The fields of some steps."""
+        arrays = {
+            one.name: getattr(self, one.name) for one in fields(self) if one.name != "clipped"
+        }
+        return Fields(**{name: array[rows] for name, array in arrays.items()}, clipped=self.clipped)
 
 
 def join_fields(parts: list[Fields]) -> Fields:
@@ -128,7 +138,7 @@ class Solution:
 
     lifted : (t, m) with the local change with height up to the terrain; level : (t, m) without
     variance : of `lifted`, a function of the hour's number
-    station_height : (m,) mean height [m] of the stations that a cell's value comes from
+    station_height : (t, m) mean height [m] of the stations that a cell's value comes from
     """
 
     lifted: np.ndarray
@@ -141,6 +151,13 @@ def _solve(window: Window, model: Model, hours, cells: Cells) -> Solution:
     """Solution of the default engine: one set of weights for all hours."""
     kriging, gaps = model.kriging, [model.gaps[hour] for hour in hours]
     filled = np.stack([kriging.fill(*pair) for pair in zip(gaps, model.values[hours], strict=True)])
+    present = np.isfinite(model.values[hours])
+    heights = np.stack(
+        [
+            kriging.fill(gap, np.where(row, window.height, np.nan))
+            for gap, row in zip(gaps, present, strict=True)
+        ]
+    )
     correlation = kriging.covariance.correlation(cells.distance[window.index])
     lift, targets = kriging.stations.lift, cells.places
     lifted = kriging.covariance.of_correlation(correlation, lift, targets.lift)
@@ -150,15 +167,17 @@ def _solve(window: Window, model: Model, hours, cells: Cells) -> Solution:
         filled.astype(np.float32) @ weights.values,
         kriging.field(filled, level, targets),
         lambda row: hour_variance(weights, gaps[row]),
-        window.height.astype(np.float32) @ weights.values,
+        heights.astype(np.float32) @ weights.values,
     )
 
 
 def _solve_with_pykrige(window: Window, model: Model, hours, cells: Cells) -> Solution:
     """Solution of PyKrige, hour by hour; the heights of the stations are kriged like a field."""
-    rows = np.vstack([model.values[hours], window.height])
-    field, variance = krige_with_pykrige(model.kriging, cells.places, rows)
-    return Solution(field[:-1], field[:-1], lambda row: variance[row], field[-1])
+    values = model.values[hours]
+    heights = np.where(np.isfinite(values), window.height, np.nan)
+    field, variance = krige_with_pykrige(model.kriging, cells.places, values)
+    station_height, _ = krige_with_pykrige(model.kriging, cells.places, heights)
+    return Solution(field, field, lambda row: variance[row], station_height)
 
 
 ENGINES: dict[str, Callable[..., Solution]] = {
@@ -243,7 +262,8 @@ def _sigma(pwv, kriging_variance, relative_height_sigma, common):
 
 def _pack(values):
     """Values [kg m-2] in packed steps; below zero as zero."""
-    return np.rint(np.clip(values, 0.0, 320.0) * np.float32(1.0 / PACKED_STEP)).astype(np.int16)
+    packed = np.clip(values, 0.0, HIGHEST) * np.float32(1.0 / PACKED_STEP)
+    return np.where(np.isnan(packed), MISSING, np.rint(packed)).astype(np.int16)
 
 
 def _quality(window: Window, values, cells: Cells, sigma, far_distance: float):

@@ -7,6 +7,7 @@ relative to the file.
 
 from __future__ import annotations
 
+import re
 import tomllib
 from datetime import timedelta
 from pathlib import Path
@@ -26,6 +27,9 @@ from fieldgen.constants import MEAN_TEMPERATURE, REFRACTIVITY, MeanTemperature
 from fieldgen.errors import SettingsError
 from fieldgen.kriging.covariance import MODELS
 from fieldgen.kriging.fitting import AUTO
+
+_KEY = re.compile(r"[a-z_]+")
+"""A key of the settings, unlike the library's names for the branches of a choice."""
 
 _DURATION_UNITS = {"min": "minutes", "h": "hours", "d": "days"}
 
@@ -129,6 +133,7 @@ class TerrainTable(_Table):
 
     file: Path
     geoid: float | Path | None = None
+    lowest_land: float = 0.0
 
 
 class RetrievalTable(_Table):
@@ -206,6 +211,8 @@ class KrigingTable(_Table):
         fixed = (self.partial_sill, self.range, self.nugget)
         if any(value is None for value in fixed) != all(value is None for value in fixed):
             raise ValueError("expected partial_sill, range and nugget together, or none of them")
+        if self.partial_sill is None and (self.slope_sill or self.curvature_sill):
+            raise ValueError("expected slope_sill and curvature_sill only with partial_sill")
         if self.covariance == AUTO and self.partial_sill is not None:
             raise ValueError("expected the name of a covariance with fixed parameters")
         if self.engine == "pykrige" and self.covariance in (AUTO, "matern32"):
@@ -222,7 +229,6 @@ class ProductsTable(_Table):
     )
     coast: Path | None = None
     rivers: Path | None = None
-    catchments: Path | None = None
 
 
 class Settings(_Table):
@@ -272,7 +278,8 @@ def _read_toml(path: Path) -> dict:
 
 def _format_problem(problem: dict) -> str:
     """One line for one problem: the key's path, its value and the rule."""
-    key = ".".join(str(part) for part in problem["loc"])
+    parts = [str(part) for part in problem["loc"]]
+    key = ".".join(part for part in parts if part.isdigit() or _KEY.fullmatch(part))
     if problem["type"] == "extra_forbidden":
         return f"{key}: unknown key"
     if problem["type"] == "missing":

@@ -51,7 +51,14 @@ def format_check(network: Network, stations: xr.Dataset) -> str:
         f"steps     {len(time)}, stamped {_minute(time[0])} to {_minute(time[-1])} UTC",
         f"usable    {usable:.1%} of the stations' values before they are compared with each other",
     ]
-    return "\n".join([*lines, _format_reading(report)]).rstrip()
+    barometers = [
+        f"barometer {site}: contradicts the others in {count} steps"
+        for site, count in zip(
+            stations.site.values, stations.barometer_rejected.values.sum(axis=0), strict=True
+        )
+        if count
+    ]
+    return "\n".join([*lines, _format_reading(report), *barometers]).rstrip()
 
 
 def _minute(time) -> str:

@@ -95,17 +95,19 @@ def read_grid(path: Path) -> Grid:
 
 def _axis(dataset, path: Path, standard_names, letter: str):
     """Ascending cell centres and spacing of the dataset's axis."""
-    found = [
-        variable.values
+    axes = [
+        variable
         for variable in dataset.coords.values()
         if variable.ndim == 1 and variable.attrs.get("standard_name") in standard_names
     ]
+    found = [variable.values for variable in axes]
+    units = [variable.attrs.get("units") for variable in axes]
     if len(found) != 1:
         raise GridError(
             f"{path}: {len(found)} one-dimensional {letter} coordinates, expected one with "
             f"standard_name {' or '.join(standard_names)}."
         )
-    centres = np.sort(found[0].astype(float))
+    centres = np.sort(found[0].astype(float)) * (1000.0 if units == ["km"] else 1.0)
     steps = np.diff(centres)
     if len(steps) < 1 or not np.allclose(steps, steps.mean(), rtol=1e-3):
         raise GridError(f"{path}: {letter} is not evenly spaced, expected cells of equal size.")

@@ -19,30 +19,30 @@ MOST_POINTS = 4
 exponential, and more would only cost memory."""
 
 SEA_LEVEL = 0.0
+"""Height [m] of the sea, and of what the raster leaves out."""
 
 
 @dataclass(frozen=True)
 class Terrain:
     """Orthometric heights [m] of the ground.
 
-    points (k, ny, nx) : heights at k points spread evenly over each cell; sea and gaps are 0
+    points (k, ny, nx) : heights at k points spread evenly over each cell; gaps are 0
+    is_sea (ny, nx) : cells without any land
     """
 
     points: np.ndarray
+    is_sea: np.ndarray
 
     @property
     def mean(self):
         """Mean height (ny, nx) [m] of each cell."""
         return self.points.mean(axis=0)
 
-    @property
-    def is_sea(self):
-        """Cells (ny, nx) without any land."""
-        return (self.points <= SEA_LEVEL).all(axis=0)
 
-
-def read_terrain(path: Path, grid: Grid) -> Terrain:
+def read_terrain(path: Path, grid: Grid, lowest_land: float = SEA_LEVEL) -> Terrain:
     """Terrain of a raster file (GeoTIFF, NetCDF or another format of GDAL) under a grid.
+
+    What lies at `lowest_land` [m] or below is sea, at height 0 however deep it is.
 
     Raises InputError if the file cannot be read, GridError if it does not cover the grid.
     """
@@ -53,11 +53,12 @@ def read_terrain(path: Path, grid: Grid) -> Terrain:
     ny, nx = grid.shape
     side = len(fine) // ny
     points = fine.reshape(ny, side, nx, side).transpose(1, 3, 0, 2).reshape(-1, ny, nx)
-    return Terrain(np.ascontiguousarray(points))
+    sea = points <= lowest_land
+    return Terrain(np.where(sea, np.float32(SEA_LEVEL), points), sea.all(axis=0))
 
 
 def read_raster_at(path: Path, longitude, latitude, what: str):
-    """Values (n,) of a raster at points [degrees], bilinear; NaN outside it."""
+    """Values (n,) of a raster at points [degrees], bilinear; NaN outside it and near its gaps."""
     with _open_raster(path, what) as raster:
         return _sample(raster, np.asarray(longitude), np.asarray(latitude))
 
@@ -76,6 +77,10 @@ def _open_raster(path: Path, what: str):
 def _check_covers(raster, path: Path, grid: Grid) -> None:
     """The grid's cells must lie inside the raster; its resolution is allowed as slack."""
     bounds = transform_bounds(grid.crs.to_wkt(), raster.crs, *grid.bounds, densify_pts=21)
+    if not np.isfinite(bounds).all():
+        raise GridError(
+            f"grid: its edges have no place in {grid.crs.name}. Check grid.crs and the edges."
+        )
     slack = 1.5 * max(abs(size) for size in raster.res)
     box = raster.bounds
     if (
@@ -134,7 +139,7 @@ def _sample(raster, longitude, latitude):
     )  # fmt: skip
     values = np.full(len(column), np.nan)
     if inside.any():
-        band = raster.read(1, masked=True).astype(float).filled(SEA_LEVEL)
+        band = raster.read(1, masked=True).astype(float).filled(np.nan)
         if around_the_globe:  # the last column borders on the first
             band = np.column_stack([band, band[:, 0]])
         values[inside] = map_coordinates(

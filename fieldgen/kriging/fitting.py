@@ -255,9 +255,7 @@ class ScaleHeight:
     def remembering(self, last: ScaleHeight, kept: float) -> ScaleHeight:
         """This usual value, drawn to the one of the hour before, of which `kept` (0 to 1) is kept.
 
-        The decay is a first-order autoregressive process about the usual one. The errors of
-        neighbouring hours come from the same weather, so the last hour's is taken for no smaller
-        than it would be after as many independent hours as are remembered.
+        The decay is a first-order autoregressive process about the usual one.
         """
         decay = self.decay + kept * (last.decay - self.decay)
         variance = (1.0 - kept**2) * self.decay_sigma**2 + kept**2 * last.decay_sigma**2
@@ -273,8 +271,9 @@ def fit_scale_height(
         mistaken for an effect of height
     gaps : of the hour
     water_vapour : (n,) [kg m-2] at the stations' own heights, NaN where missing
-    height : (n,) [m], mean : mean PWV at the reference height [kg m-2], which scales the
-        covariance of PWV to that of its logarithm
+    height : (n,) [m]
+    mean : PWV at the reference height [kg m-2] that the covariance belongs to, and that scales it
+        to the covariance of the logarithm
     prior : takes over where the stations say nothing, as in a network without relief
     """
     present = np.isfinite(water_vapour)

@@ -32,7 +32,11 @@ def _krige_hour(kriging: Kriging, targets: Places, values):
         "range": covariance.range,
         "nugget": covariance.nugget + error_variance,
     }
-    options = {"variogram_model": covariance.model, "variogram_parameters": parameters}
+    options = {
+        "variogram_model": covariance.model,
+        "variogram_parameters": parameters,
+        "exact_values": False,  # a target at a station's place is not the station's value
+    }
     position = (*stations.positions[present].T, values[present])
     drift = stations.drift[present, 1:].T
     if len(drift):
@@ -43,4 +47,4 @@ def _krige_hour(kriging: Kriging, targets: Places, values):
     else:
         solver, more = OrdinaryKriging3D(*position, **options), {}
     field, variance = solver.execute("points", *targets.positions.T, **more)
-    return np.asarray(field), np.asarray(variance) - error_variance
+    return np.asarray(field), np.maximum(np.asarray(variance) - error_variance, 0.0)

@@ -26,6 +26,10 @@ def whole_file(path: Path) -> Iterator[Path]:
     except OSError as error:
         reason = error.strerror or str(error)
         raise OutputError(f"{path}: cannot be written: {reason}.") from None
+    except RuntimeError as error:  # how the NetCDF library tells of a full disk
+        if "NetCDF" not in str(error):
+            raise
+        raise OutputError(f"{path}: cannot be written: {error}.") from None
     finally:
         with suppress(OSError):
             temporary.unlink(missing_ok=True)

@@ -23,7 +23,7 @@ PACKED = {"scale_factor": np.float32(PACKED_STEP), "_FillValue": np.int16(MISSIN
 COMPRESSION = {"zlib": True, "complevel": 1, "shuffle": True}
 
 _SUMMARY = (
-    "Hourly precipitable water vapour on a grid. Zenith delays of ground-based GNSS stations are "
+    "Precipitable water vapour on a grid. Zenith delays of ground-based GNSS stations are "
     "converted to water vapour, reduced to a common reference height with an exponential scale "
     "height, kriged, and brought back to the terrain."
 )
@@ -105,8 +105,8 @@ def _pwv_attributes() -> dict:
             "ancillary_variables": "pwv_sigma flag",
             "cell_methods": "time: mean area: mean",
             "comment": "1 kg m-2 is 1 mm of liquid water. The standard error counts what all cells "
-        "share, sqrt(common_sigma^2 + (common_relative_sigma pwv)^2), too.",
-    }
+            "share, sqrt(common_sigma^2 + (common_relative_sigma pwv)^2), too.",
+        }
     )
 
 

@@ -98,7 +98,7 @@ def _attributes(stations: xr.Dataset, network: NetworkTable, time) -> dict:
     longitude, latitude = stations.longitude.values, stations.latitude.values
     attributes = global_attributes(
         title="delays and water vapour at the stations",
-        summary="Hourly zenith delays, surface pressure and precipitable water vapour of the "
+        summary="Zenith delays, surface pressure and precipitable water vapour of the "
         "stations, with the reasons why a value is not used in the fields.",
         network=network,
         product_id=f"stations_{np.datetime_as_string(time[0], unit='m')}",

@@ -20,6 +20,9 @@ from fieldgen.readers.tables import StationRow, read_station_table
 from fieldgen.readers.time_grid import TimeGrid, spikes, step_means
 from fieldgen.settings import Settings, read_settings
 
+SPIKE_WINDOW = np.timedelta64(3600, "s")
+"""Records are held against the median of their hour, however long a step is."""
+
 
 @dataclass
 class Network:
@@ -49,14 +52,21 @@ def read_network(path: str | Path, progress: Callable[[str], None] = lambda file
     """
     settings = read_settings(path)
     grid = _read_grid(settings)
-    terrain = read_terrain(settings.path(settings.terrain.file), grid)
+    land = settings.terrain
+    terrain = read_terrain(settings.path(land.file), grid, land.lowest_land)
     report = ReadingReport()
+    _check_lines(settings)
     delays = list(_read_files(settings, "delays", read_delays, report, progress))
     weather = list(_read_files(settings, "weather", read_weather, report, progress))
     table = _read_table(settings, report)
     stations = locate_stations(settings, grid, delays, table, report)
     sites = locate_sites(settings, weather, stations, report)
     report_climbs(settings, stations, sites, report)
+    if not sites.sizes["site"]:
+        report.warnings.append(
+            "no barometer: delays in metres cannot become water vapour. Name weather files in "
+            "stations.weather."
+        )
     time = _time_grid(settings, delays)
     return Network(
         settings=settings,
@@ -67,6 +77,14 @@ def read_network(path: str | Path, progress: Callable[[str], None] = lambda file
         weather=_grid_weather(weather, sites, time),
         report=report,
     )
+
+
+def _check_lines(settings: Settings) -> None:
+    """Raise InputError for lines of the maps that are not there, before the work begins."""
+    for name in ("coast", "rivers"):
+        path = getattr(settings.products, name)
+        if path is not None and not settings.path(path).is_file():
+            raise InputError(f"products.{name}: {settings.path(path)} is not a file.")
 
 
 def _read_grid(settings: Settings) -> Grid:
@@ -108,7 +126,7 @@ def _read_files(settings: Settings, kind: str, read, report: ReadingReport, prog
         used += 1
         report.files[name] = len(records.time)
         report.rejections.merge(records.rejections)
-        report.warnings.extend(records.warnings)
+        report.warnings.extend(f"{name}: {warning}" for warning in records.warnings)
         records.compact()
         yield records
     if files and not used:
@@ -153,9 +171,9 @@ def _grid_delays(
         keep = _last_of_each(epoch)
         doubled += len(epoch) - len(keep)
         epoch, values = epoch[keep], {name: values[name][keep] for name in names}
-        spike = spikes(epoch, values["ztd"], time.step, settings.screening.spike)
+        spike = spikes(epoch, values["ztd"], SPIKE_WINDOW, settings.screening.spike)
         if spike.any():
-            report.rejections.counts[f"station {station}", "spike within the step"] += int(
+            report.rejections.counts[f"station {station}", "spike within the hour"] += int(
                 spike.sum()
             )
         for name in names:

@@ -49,6 +49,7 @@ def locate_stations(
         for station, site in sorted(in_files.items())
         if (row := _station_row(station, site, table, report)) is not None
     }
+    _leave_out_doubtful(rows, report)
     if not rows:
         raise InputError("stations: no station has coordinates. Give stations.table.")
     column = _columns(rows)
@@ -65,6 +66,7 @@ def locate_stations(
         coords={"station": np.array(list(rows), dtype=object)},
     )
     near = _near_grid(settings, grid, stations, report)
+    _check_reference_height(settings, near)
     return _with_terrain(settings, near, report)
 
 
@@ -96,6 +98,20 @@ def _station_row(station: str, site: Site, table, report: ReadingReport) -> Stat
         )
     report.left_out[station] = "no coordinates in stations.table or in the delay files"
     return None
+
+
+def _leave_out_doubtful(rows: dict[str, StationRow], report: ReadingReport) -> None:
+    """Leave out stations that share one row of the table by their first four characters."""
+    users: dict[int, list[str]] = {}
+    for station, row in rows.items():
+        users.setdefault(id(row), []).append(station)
+    for stations in users.values():
+        if len(stations) > 1:
+            for station in stations:
+                row = rows.pop(station)
+                report.left_out[station] = (
+                    f"{row.id} of stations.table may be {' or '.join(stations)}; give full names"
+                )
 
 
 def _row_of_short_name(station: str, table: dict[str, StationRow]) -> StationRow | None:
@@ -187,6 +203,16 @@ def _distance_to_grid(grid: Grid, longitude, latitude):
     position, cell_position = chord_positions(longitude, latitude), chord_positions(*cells)
     nearest = [np.linalg.norm(cell_position - place, axis=1).min() for place in position]
     return np.where(inside, 0.0, nearest)
+
+
+def _check_reference_height(settings: Settings, stations: xr.Dataset) -> None:
+    """The reference height must lie inside the stations' range: beyond it nothing is measured."""
+    height, heights = settings.heights.reference_height, stations.orthometric_height.values
+    if height != "auto" and not heights.min() <= height <= heights.max():
+        raise InputError(
+            f"heights.reference_height: is {height:g} m, expected between the stations' lowest "
+            f"{heights.min():.0f} m and highest {heights.max():.0f} m."
+        )
 
 
 def _with_terrain(settings: Settings, stations: xr.Dataset, report: ReadingReport) -> xr.Dataset:

@@ -43,6 +43,9 @@ _STANDARD_TEMPERATURE = 288.15
 _STANDARD_TEMPERATURE_SIGMA = 10.0
 """Temperature at sea level where no thermometer reports [K]: ICAO standard atmosphere."""
 
+SURE = 4.0
+"""A barometer's residual counts if it is this many times its own standard deviation, too."""
+
 _LINEAR_DRIFT_MINIMUM = 6
 """Barometers needed before a plane is fitted through them."""
 
@@ -142,7 +145,8 @@ def _bring(pressure, relative_humidity, temperature, height, new_height):
 
 
 def screen_barometers(weather: Weather, barometers: Sites, barometer_sigma: float, limit: float):
-    """Pressures (t, s) [hPa] brought to one level differ from the others' by more than `limit`.
+    """Pressures (t, s) [hPa] brought to one level differ from the others' by more than `limit`,
+    and by more than `SURE` times what weather and the way to the level explain.
 
     Returns rejected (t, s) bool and the residuals (t, s) [hPa] of leaving each barometer out.
     The worst barometer of an hour goes first, so that it does not condemn its neighbours.
@@ -153,15 +157,20 @@ def screen_barometers(weather: Weather, barometers: Sites, barometer_sigma: floa
         return rejected, residuals
     level = barometers.height.mean()
     at_level, error = pressure_at_level(weather, barometers, level, barometer_sigma)
-    kriging = _kriging(PRESSURE_COVARIANCE, _usual(error), barometers, "constant")
+    krigings = {
+        drift: _kriging(PRESSURE_COVARIANCE, _usual(error), barometers, drift)
+        for drift in ("constant", "linear")
+    }
     for hour, values in enumerate(at_level):
         values = values.copy()
-        while np.isfinite(values).sum() >= 3:
-            residual, _ = kriging.leave_one_out(values, kriging.gaps(np.isnan(values)))
+        while (count := np.isfinite(values).sum()) >= 3:
+            kriging = krigings[_drift(count)]
+            residual, sigma = kriging.leave_one_out(values, kriging.gaps(np.isnan(values)))
             residuals[hour] = np.where(np.isfinite(residual), residual, residuals[hour])
-            worst = np.nanargmax(np.abs(residual))
-            if abs(residual[worst]) <= limit:
+            suspect = (np.abs(residual) > limit) & (np.abs(residual) > SURE * sigma)
+            if not suspect.any():
                 break
+            worst = np.argmax(np.where(suspect, np.abs(residual), -1.0))
             rejected[hour, worst] = True
             values[worst] = np.nan
     return rejected, residuals
@@ -214,29 +223,29 @@ def _own_pressure(weather, barometers, antennas, own, temperature, barometer_sig
 
 def _neighbours_pressure(weather, barometers, antennas, own, temperature, barometer_sigma):
     pressure, sigma = np.full(temperature.shape, np.nan), np.full(temperature.shape, np.nan)
-    known = np.isfinite(weather.pressure).any(axis=1)
-    if not known.any():
+    if not len(barometers.height):
         return pressure, sigma
     level = barometers.height.mean()
     at_level, error = pressure_at_level(weather, barometers, level, barometer_sigma)
-    usual = np.isfinite(at_level).sum(axis=1)[known].min()
-    drift = "linear" if usual >= _LINEAR_DRIFT_MINIMUM else "constant"
-    field, variance = _krige_hours(
-        PRESSURE_COVARIANCE,
-        at_level[known],
-        _usual(error),
-        barometers,
-        antennas,
-        drift,
-    )
-    at_level_temperature = temperature[known] + STANDARD_LAPSE_RATE.value * (
-        antennas.height - level
-    )
-    pressure[known], way = _bring(
-        field, np.full_like(field, np.nan), at_level_temperature, level, antennas.height
-    )
-    sigma[known] = np.hypot(np.sqrt(variance), way)
+    at_level_temperature = temperature + STANDARD_LAPSE_RATE.value * (antennas.height - level)
+    drifts = np.array([_drift(count) for count in np.isfinite(at_level).sum(axis=1)])
+    for drift in ("constant", "linear"):
+        hours = (drifts == drift) & np.isfinite(at_level).any(axis=1)
+        if not hours.any():
+            continue
+        field, variance = _krige_hours(
+            PRESSURE_COVARIANCE, at_level[hours], _usual(error), barometers, antennas, drift
+        )
+        pressure[hours], way = _bring(
+            field, np.full_like(field, np.nan), at_level_temperature[hours], level, antennas.height
+        )
+        sigma[hours] = np.hypot(np.sqrt(variance), way)
     return pressure, sigma
+
+
+def _drift(count: int) -> str:
+    """Drift of pressure for a number of barometers: a plane needs a few more than three."""
+    return "linear" if count >= _LINEAR_DRIFT_MINIMUM else "constant"
 
 
 def _usual(error_variance):

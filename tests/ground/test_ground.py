@@ -55,7 +55,7 @@ def test_terrain_points_are_the_pixels_of_each_cell(tmp_path):
 
 
 def test_terrain_gaps_are_sea(tmp_path):
-    """A limit: nodata and negative heights count as sea, a coastal cell does not."""
+    """A limit: nodata counts as sea, a coastal cell does not."""
     values = np.full((4, 8), -9999.0, np.float32)
     values[0, 0] = 50.0
     bounds = (500000, 5200000, 504000, 5202000)
@@ -64,6 +64,18 @@ def test_terrain_gaps_are_sea(tmp_path):
     assert terrain.is_sea.sum() == 7
     assert not terrain.is_sea[1, 0]
     assert terrain.mean.min() == 0.0
+
+
+def test_the_bottom_of_the_sea_is_at_sea_level(tmp_path):
+    """Negative control: bathymetry of -2500 m would make air hundreds of kg m-2 moist; land below
+    the sea needs `lowest_land`."""
+    values = np.full((4, 8), -2500.0, np.float32)
+    values[:, 4:] = -300.0
+    path = write_raster(tmp_path / "t.tif", values, (500000, 5200000, 504000, 5202000))
+    assert (read_terrain(path, grid()).points == 0.0).all()
+    below = read_terrain(path, grid(), lowest_land=-450.0)
+    assert below.mean[0].tolist() == [0.0, 0.0, -300.0, -300.0]
+    assert below.is_sea[0].tolist() == [True, True, False, False]
 
 
 def test_terrain_in_another_crs_and_coarser_than_the_grid(tmp_path):
@@ -111,6 +123,12 @@ def test_undulation_is_a_number_or_a_grid_that_covers(tmp_path):
         tmp_path / "g.tif", np.full((4, 4), 55.0, np.float32), (-28, 47, -26, 49), crs="EPSG:4326"
     )
     assert undulation(path, np.array([-27.0]), np.array([48.0])) == pytest.approx(55.0)
+    hole = np.full((4, 4), -9999.0, np.float32)
+    path_of_hole = write_raster(
+        tmp_path / "h.tif", hole, (-28, 47, -26, 49), crs="EPSG:4326", nodata=-9999
+    )
+    with pytest.raises(InputError, match="does not cover"):
+        undulation(path_of_hole, np.array([-27.0]), np.array([48.0]))
     with pytest.raises(InputError, match="does not cover"):
         undulation(path, np.array([10.0]), np.array([48.0]))
 

@@ -41,7 +41,7 @@ def dry_weather(barometers: Sites, hours: int = 3) -> Weather:
 
 
 def test_pressure_at_height_follows_the_standard_atmosphere():
-    """Analytic: 1500 m up with the layer's mean temperature, to 0.05 hPa."""
+    """Analytic: 1500 m up with the layer's mean temperature, to 0.25 hPa."""
     layer = (temperature(0) + temperature(1500)) / 2
     assert pressure_at_height(1013.25, 0.0, 1500.0, layer) == pytest.approx(
         pressure(1500.0), abs=0.25
@@ -111,4 +111,16 @@ def test_screen_barometers_finds_the_wrong_height_and_only_that():
     assert rejected[:, 2].all()
     assert rejected.sum() == 3
     assert residual[0, 2] == pytest.approx(9.5, abs=1.0)
+    assert not screen_barometers(weather, barometers, 0.3, 4.0)[0].any()
+
+
+def test_screen_barometers_leaves_a_gradient_alone():
+    """Negative control: 3.9 hPa over 100 km is a storm, and every barometer tells the truth."""
+    draw = np.random.default_rng(3)
+    longitude, latitude = draw.uniform(-34, -24, 15), draw.uniform(44, 52, 15)
+    barometers = Sites(longitude, latitude, np.full(15, 20.0))
+    weather = dry_weather(barometers)
+    slope = 3.9 * (latitude - 48.0) * 111.0 / 100.0
+    weather = weather._replace(pressure=weather.pressure + slope)
+    assert np.ptp(slope) > 25.0
     assert not screen_barometers(weather, barometers, 0.3, 4.0)[0].any()
