@@ -27,7 +27,7 @@ def make_fields(network: Network, start: str | None = None, end: str | None = No
     """
     maker = DayMaker(network)
     times, made = [], []
-    for piece in _pieces(network, start, end):
+    for piece in pieces_of(network, start, end):
         day, fields = maker.compute(piece)
         times.append(day.stations.time.values[piece.asked])
         made.append(fields.steps(piece.asked))
@@ -50,7 +50,7 @@ def make(
     progress : called with the name of each day when it is done, and the number of days
     Raises InputError if the period is empty, OutputError if the folder cannot be written.
     """
-    days = _pieces(network, start, end)
+    days = pieces_of(network, start, end)
     limits = colour_limits(network, days[0].first, days[-1].last)
     writer = DayWriter(DayMaker(network), folder, limits)
     reports = []
@@ -62,7 +62,8 @@ def make(
     return run
 
 
-def _pieces(network: Network, start: str | None, end: str | None) -> list[Piece]:
+def pieces_of(network: Network, start: str | None, end: str | None) -> list[Piece]:
+    """The days of a network that a period touches; raises InputError as `pieces` does."""
     step = np.timedelta64(int(network.settings.network.time_step.total_seconds()), "s")
     delays = network.delays
     has_data = np.isfinite(delays.ztd.values) | np.isfinite(delays.pwv.values)

@@ -185,6 +185,7 @@ def _check(options: argparse.Namespace) -> int:
 
 
 def _score(options: argparse.Namespace) -> int:
+    from fieldgen.period import check_period
     from fieldgen.progress import Progress
     from fieldgen.scoring.files import write_score
     from fieldgen.scoring.picture import write_picture
@@ -192,6 +193,7 @@ def _score(options: argparse.Namespace) -> int:
     from fieldgen.scoring.summary import format_score
     from fieldgen.scoring.trials import score_network
 
+    check_period(options.start, options.end)
     with Progress() as progress:
         network = _read(options.network, progress)
         folder = _product_folder(options, network) / "score"

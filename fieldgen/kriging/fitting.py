@@ -52,8 +52,12 @@ AUTO = "auto"
 MINIMUM_STATIONS = 8
 """Fewer stations than this cannot tell a range from a sill."""
 
-HOURS_USED = 16
-"""Neighbouring hours say nearly the same; this many, spread over the window, say it all."""
+HOURS_USED = (6, 16)
+"""Neighbouring hours say nearly the same: of a large and of a small network at least and at most
+this many, spread over the window, are fitted to."""
+
+VALUES_USED = 640
+"""Values that are plenty for five parameters; as many hours are taken as hold them."""
 
 STATIONS_USED = 80
 """Of a larger network this many stations, spread over the list, are fitted to: the cost of a step
@@ -119,7 +123,8 @@ def fit_covariance(
     if not hours:
         note = f"fewer than {MINIMUM_STATIONS} stations in every hour: usual covariance"
         return CovarianceFit(usual_covariance(model, profile=profile), False, note)
-    values = values[np.array(hours)[_spread(len(hours), HOURS_USED)]]
+    enough = int(np.clip(VALUES_USED // len(used), *HOURS_USED))
+    values = values[np.array(hours)[_spread(len(hours), enough)]]
     start = near or usual_covariance(model, profile=profile)
     fits = []
     for name in (

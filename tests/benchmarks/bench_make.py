@@ -38,21 +38,56 @@ def main() -> None:
 
 
 def run(folder: Path, options) -> None:
+    """Both runs of `make` come first: a process inherits the peak of the one that starts it."""
     size = {"stations": options.stations, "cells": options.cells, "gap_share": options.gaps}
     network = write_network(folder, hours=options.hours, **size)
+    short = folder / "short"
+    short.mkdir()
+    few = max(options.hours // 10, 24)
+    _, less = time_make(write_network(short, hours=few, **size), short / "out")
     seconds, peak = time_make(network, folder / "out")
-    print(f"make      {options.hours} hours in {seconds:.2f} s, peak {peak:.0f} MB a process")
+    print(f"make      {options.hours} hours in {seconds:.2f} s")
+    print(f"memory    {peak:.0f} MB a process, {peak / less:.2f} times that for {few} hours")
     each = time_pykrige(network)
     print(f"PyKrige   {each:.3f} s an hour, kriging alone, {os.cpu_count()} BLAS threads")
     print(f"ratio     {each * options.hours / seconds:.1f} times the speed of PyKrige")
     write = time_writing(folder / "out")
     print(
-        f"writing   {write:.2f} s for the same arrays alone; make takes {seconds / write:.2f} times"
+        f"writing   {write:.2f} s for the same arrays; make takes {seconds / write:.2f} times that"
     )
-    short = folder / "short"
-    short.mkdir()
-    _, less = time_make(write_network(short, hours=options.hours // 10, **size), short / "out")
-    print(f"memory    {less:.0f} MB for a tenth of the hours, {peak / less:.2f} times that for all")
+    stages = time_stages(short / "network.toml", short / "out")
+    total = sum(stages.values())
+    print("stages    " + ", ".join(f"{name} {part / total:.0%}" for name, part in stages.items()))
+
+
+def time_stages(path: Path, out: Path) -> dict[str, float]:
+    """Seconds by stage of the days of a network in one process, without reading and start."""
+    from threadpoolctl import threadpool_limits
+
+    from fieldgen.day_maker import DayMaker
+    from fieldgen.fields import make_fields_of_day
+    from fieldgen.memory import keep_freed_memory
+    from fieldgen.period import pieces
+    from fieldgen.products.field_file import write_fields
+    from fieldgen.readers.network import read_network
+
+    network = read_network(path)
+    maker = DayMaker(network)
+    time_ = network.delays.time.values
+    spent = dict.fromkeys(("retrieve and fit", "krige and lift", "pack and write"), 0.0)
+    keep_freed_memory()
+    with threadpool_limits(1):
+        for piece in pieces(time_, time_[1] - time_[0], np.ones(len(time_), bool), None, None):
+            clock = [time.perf_counter()]
+            day = maker.analyse(piece)
+            clock.append(time.perf_counter())
+            fields = make_fields_of_day(network.settings, maker._cells, day)
+            clock.append(time.perf_counter())
+            write_fields(maker.packed_dataset(day.stations.time.values, fields), out / "again.nc")
+            clock.append(time.perf_counter())
+            for name, seconds in zip(spent, np.diff(clock), strict=True):
+                spent[name] += float(seconds)
+    return spent
 
 
 def time_make(network: Path, out: Path):
