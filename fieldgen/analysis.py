@@ -409,7 +409,9 @@ def _residuals(model: Model, hour: int, at_reference):
     predicted = model.kriging.fill(gaps, values)
     own = np.zeros(len(values))
     own[gaps.changed] = np.sqrt(np.diag(gaps.update))
-    sigma = np.where(out, own, sigma) * np.sqrt(model.variance_factor[hour])
+    error = model.kriging.error_variance + model.excess[hour]  # the station's own
+    between = np.maximum(np.where(out, own, sigma) ** 2 - error, 0.0) * model.variance_factor[hour]
+    sigma = np.sqrt(between + error)
     return np.array([np.where(out, at_reference - predicted, residual), sigma])
 
 

@@ -5,7 +5,7 @@ Fields are packed as the files hold them, in steps of 0.01 kg m-2, as soon as th
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
 from dataclasses import dataclass, fields
 
 import numpy as np
@@ -137,53 +137,63 @@ class Solution:
     """What kriging says of some cells, at the reference height; t hours, m cells.
 
     lifted : (t, m) with the local change with height up to the terrain; level : (t, m) without
-    variance : of `lifted`, a function of the hour's number
+    variance : (t, m) of `lifted`
     station_height : (t, m) mean height [m] of the stations that a cell's value comes from
     """
 
     lifted: np.ndarray
     level: np.ndarray
-    variance: Callable[[int], np.ndarray]
+    variance: np.ndarray
     station_height: np.ndarray
 
 
-def _solve(window: Window, model: Model, hours, cells: Cells) -> Solution:
-    """Solution of the default engine: one set of weights for all hours."""
-    kriging, gaps = model.kriging, [model.gaps[hour] for hour in hours]
-    filled = np.stack([kriging.fill(*pair) for pair in zip(gaps, model.values[hours], strict=True)])
-    present = np.isfinite(model.values[hours])
-    heights = np.stack(
-        [
-            kriging.fill(gap, np.where(row, window.height, np.nan))
-            for gap, row in zip(gaps, present, strict=True)
-        ]
-    )
-    correlation = kriging.covariance.correlation(cells.distance[window.index])
-    lift, targets = kriging.stations.lift, cells.places
-    lifted = kriging.covariance.of_correlation(correlation, lift, targets.lift)
-    weights = kriging.weights_of_covariances(lifted, targets)
-    level = kriging.covariance.of_correlation(correlation, lift, np.zeros_like(targets.lift))
-    return Solution(
-        filled.astype(np.float32) @ weights.values,
-        kriging.field(filled, level, targets),
-        lambda row: hour_variance(weights, gaps[row]),
-        heights.astype(np.float32) @ weights.values,
-    )
+class OwnEngine:
+    """The default engine: what a day's hours need is prepared once, for all pieces of the grid."""
+
+    def __init__(self, window: Window, model: Model, hours):
+        self.window, self.kriging = window, model.kriging
+        self.gaps = [model.gaps[hour] for hour in hours]
+        values = model.values[hours]
+        heights = np.where(np.isfinite(values), window.height, np.nan)
+        self.values = self._fill(values)
+        self.heights = self._fill(heights).astype(np.float32)
+
+    def _fill(self, values):
+        """Values (t, n) after the gap identity."""
+        return np.stack([self.kriging.fill(*pair) for pair in zip(self.gaps, values, strict=True)])
+
+    def __call__(self, cells: Cells) -> Solution:
+        """Solution of some cells, from one set of weights for all hours."""
+        kriging, targets = self.kriging, cells.places
+        covariance, lift = kriging.covariance, kriging.stations.lift
+        correlation = covariance.correlation(cells.distance[self.window.index])
+        level = covariance.of_correlation(correlation, lift, np.zeros_like(targets.lift))
+        lifted = covariance.of_correlation(correlation, lift, targets.lift)
+        weights = kriging.weights_of_covariances(lifted, targets)
+        return Solution(
+            self.values.astype(np.float32) @ weights.values,
+            kriging.field(self.values, level, targets),
+            np.stack([hour_variance(weights, gaps) for gaps in self.gaps]),
+            self.heights @ weights.values,
+        )
 
 
-def _solve_with_pykrige(window: Window, model: Model, hours, cells: Cells) -> Solution:
-    """Solution of PyKrige, hour by hour; the heights of the stations are kriged like a field."""
-    values = model.values[hours]
-    heights = np.where(np.isfinite(values), window.height, np.nan)
-    field, variance = krige_with_pykrige(model.kriging, cells.places, values)
-    station_height, _ = krige_with_pykrige(model.kriging, cells.places, heights)
-    return Solution(field, field, lambda row: variance[row], station_height)
+class PykrigeEngine:
+    """PyKrige, hour by hour; the heights of the stations are kriged like a field."""
+
+    def __init__(self, window: Window, model: Model, hours):
+        self.kriging, self.values = model.kriging, model.values[hours]
+        self.heights = np.where(np.isfinite(self.values), window.height, np.nan)
+
+    def __call__(self, cells: Cells) -> Solution:
+        """Solution of some cells."""
+        field, variance = krige_with_pykrige(self.kriging, cells.places, self.values)
+        station_height, _ = krige_with_pykrige(self.kriging, cells.places, self.heights)
+        return Solution(field, field, variance, station_height)
 
 
-ENGINES: dict[str, Callable[..., Solution]] = {
-    "fieldgen": _solve,
-    "pykrige": _solve_with_pykrige,
-}
+ENGINES = {"fieldgen": OwnEngine, "pykrige": PykrigeEngine}
+"""Made for the hours of a day, then called with pieces of the grid."""
 
 
 def make_fields_of_day(settings: Settings, cells: CellMaker, day: Day) -> Fields:
@@ -191,8 +201,10 @@ def make_fields_of_day(settings: Settings, cells: CellMaker, day: Day) -> Fields
     made = _empty(day, cells)
     hours = np.flatnonzero(day.makable)
     if len(hours):
+        engine = ENGINES[settings.kriging.engine](day.window, day.model, hours)
         for piece in cells:
-            made.clipped += _fill_piece(settings, cells.reference, day, hours, piece, made)
+            solution = engine(piece)
+            made.clipped += _fill_piece(settings, cells, day, hours, piece, solution, made)
     return made
 
 
@@ -216,16 +228,21 @@ def _empty(day: Day, cells: CellMaker) -> Fields:
 
 
 def _fill_piece(
-    settings: Settings, reference: float, day: Day, hours, cells: Cells, made: Fields
+    settings: Settings,
+    maker: CellMaker,
+    day: Day,
+    hours,
+    cells: Cells,
+    solution: Solution,
+    made: Fields,
 ) -> int:
     """Fill some cells of the fields; returns how many values were clipped."""
     window, model = day.window, day.model
-    solution = ENGINES[settings.kriging.engine](window, model, hours, cells)
     scale = model.scale_height[hours].astype(np.float32)[:, None]
-    factor = np.exp((reference - cells.points) / scale[..., None]).mean(axis=1)
+    factor = np.exp((maker.reference - cells.points) / scale[..., None]).mean(axis=1)
     pwv = solution.lifted * factor
-    variance = np.stack([solution.variance(row) for row in range(len(hours))])
-    variance *= np.square(factor) * model.variance_factor[hours].astype(np.float32)[:, None]
+    variance = solution.variance * np.square(factor)
+    variance *= model.variance_factor[hours].astype(np.float32)[:, None]
     height_sigma = model.scale_height_sigma[hours].astype(np.float32)[:, None] / np.square(scale)
     sigma = _sigma(
         pwv,

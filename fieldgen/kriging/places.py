@@ -55,9 +55,8 @@ class PlaceMaker:
 def determine_drift(places: Places, present) -> bool:
     """Whether the places present (n,) bool determine every drift function."""
     functions = places.drift[present]
-    return len(functions) > functions.shape[1] and (
-        np.linalg.matrix_rank(functions) == functions.shape[1]
-    )
+    count = functions.shape[1]
+    return len(functions) > count and (count == 1 or np.linalg.matrix_rank(functions) == count)
 
 
 def _tangent_axes(origin):
