@@ -23,7 +23,7 @@ from fieldgen.chain import make
 checker = pytest.importorskip("compliance_checker.runner", reason="compliance-checker judges")
 
 DEMO = Path(__file__).parents[2] / "demo_network"
-START, END = "2026-09-08T06:00Z", "2026-09-08T09:00Z"
+START, END = "2026-09-08T00:00Z", "2026-09-09T00:00Z"
 
 NO_STANDARD_NAME = {
     "ztd", "zhd", "zwd", "ztd_sigma", "mean_temperature", "scale_height", "residual",
@@ -136,7 +136,7 @@ def test_make_writes_fields_that_gdal_places(files, station, expected):
         last = raster.count
         (sample,) = raster.sample([(place[0][0], place[1][0])], indexes=last)
         value = sample[0] * raster.scales[last - 1] + raster.offsets[last - 1]
-    assert last == 3
+    assert last == 24
     assert value == pytest.approx(expected, abs=1e-4)
 
 
@@ -183,9 +183,10 @@ def test_make_writes_fields_that_ncdump_dates(files):
     text = subprocess.run(command, check=True, capture_output=True, text=True).stdout
     data = text.split("data:")[1]
     stamps, bounds = data.split("time_bnds")
-    assert re.findall(r'"([^"]+)"', stamps) == [f"2026-09-08 {hour:02d}" for hour in (7, 8, 9)]
-    last = int(datetime(2026, 9, 8, 9, tzinfo=UTC).timestamp())
-    edges = [last - 3600 * hours for hours in (3, 2, 1, 0)]
+    hours = [f"2026-09-08 {hour:02d}" for hour in range(1, 24)]
+    assert re.findall(r'"([^"]+)"', stamps) == [*hours, "2026-09-09"]
+    first = int(datetime(2026, 9, 8, tzinfo=UTC).timestamp())
+    edges = [first + 3600 * hour for hour in range(25)]
     assert [int(edge) for edge in re.findall(r"\d+", bounds)] == [
         edge for step in itertools.pairwise(edges) for edge in step
     ]
@@ -195,6 +196,6 @@ def test_make_writes_fields_that_ncdump_dates(files):
 def test_make_writes_fields_that_cdo_reads(files, station, expected):
     """Another library: cdo finds the nearest cell and unpacks the last hour."""
     command = ["cdo", "-s", "outputf,%.4f,1", f"-remapnn,lon={station[0]}_lat={station[1]}"]
-    command += ["-seltimestep,3", "-selname,pwv", str(files["fields"])]
+    command += ["-seltimestep,24", "-selname,pwv", str(files["fields"])]
     text = subprocess.run(command, check=True, capture_output=True, text=True).stdout
     assert float(text) == pytest.approx(expected, abs=1e-3)

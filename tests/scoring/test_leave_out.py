@@ -126,13 +126,12 @@ def test_predict_agrees_with_the_station_files_residual(day):
 
 
 def test_predict_sigma_is_that_of_kriging_without_the_other_parts(day):
-    """A limit: variance factor one and a scale height without error."""
+    """A limit: a scale height without error leaves what the analysis tells of the values used."""
     sure = np.zeros_like(day.model.scale_height)
-    plain = replace(day.model, scale_height_sigma=sure, variance_factor=sure + 1.0)
+    plain = replace(day.model, scale_height_sigma=sure)
     found = predict(replace(day, model=plain), alone(day)).sigma
     used = day.stations.isel(station=day.window.index)
-    told = used.residual_sigma.values / np.sqrt(day.model.variance_factor)[:, None]
-    expected = np.where(used.flag.values == 0, told, np.nan)
+    expected = np.where(used.flag.values == 0, used.residual_sigma.values, np.nan)
     np.testing.assert_allclose(found, expected, rtol=1e-9)
 
 
