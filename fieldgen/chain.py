@@ -2,8 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
-from concurrent.futures import ProcessPoolExecutor
+from collections.abc import Callable
 from pathlib import Path
 
 import numpy as np
@@ -12,9 +11,10 @@ import xarray as xr
 from fieldgen.day_maker import DayMaker, DayWriter, colour_limits
 from fieldgen.fields import join_fields
 from fieldgen.period import Piece, pieces
+from fieldgen.processes import map_days
 from fieldgen.products.field_file import unpack_fields
 from fieldgen.readers.network import Network
-from fieldgen.report import DayReport, RunReport
+from fieldgen.report import RunReport
 
 
 def make_fields(network: Network, start: str | None = None, end: str | None = None) -> xr.Dataset:
@@ -54,7 +54,8 @@ def make(
     limits = colour_limits(network, days[0].first, days[-1].last)
     writer = DayWriter(DayMaker(network), folder, limits)
     reports = []
-    for report in _run(writer, days, _maps_by_day(network.settings.products.maps, days), jobs):
+    maps = _maps_by_day(network.settings.products.maps, days)
+    for report in map_days(writer, days, maps, jobs=jobs):
         reports.append(report)
         progress(report.name, len(days))
     run = RunReport.of(network, folder, reports)
@@ -73,26 +74,3 @@ def pieces_of(network: Network, start: str | None, end: str | None) -> list[Piec
 def _maps_by_day(maps: str, days: list[Piece]) -> list[str]:
     """Which maps each day draws: the latest one belongs to the last day."""
     return ["none"] * (len(days) - 1) + ["latest"] if maps == "latest" else [maps] * len(days)
-
-
-def _run(writer: DayWriter, days, maps, jobs: int) -> Iterator[DayReport]:
-    """Reports of the days in their order, from one process or several."""
-    workers = min(jobs, len(days))
-    if workers == 1:
-        yield from map(writer, days, maps)
-        return
-    with ProcessPoolExecutor(workers, initializer=_take_writer, initargs=(writer,)) as pool:
-        yield from pool.map(_write_day, days, maps)
-
-
-_writer: DayWriter | None = None
-"""The writer of a process of the pool, handed over once instead of with every day."""
-
-
-def _take_writer(writer: DayWriter) -> None:
-    global _writer
-    _writer = writer
-
-
-def _write_day(piece: Piece, maps: str) -> DayReport:
-    return _writer(piece, maps)

@@ -12,7 +12,7 @@ import fieldgen
 ROOT = Path(fieldgen.__file__).parent
 
 LAYERS = [
-    ["errors", "constants", "quantities", "memory"],
+    ["errors", "constants", "quantities", "memory", "processes"],
     ["kriging", "station"],
     ["settings"],
     ["ground"],

@@ -5,8 +5,7 @@ A day is scored by itself, as it is made, so that days can share the processors.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
-from concurrent.futures import ProcessPoolExecutor
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -17,6 +16,7 @@ from fieldgen.chain import pieces_of
 from fieldgen.day_maker import DayMaker
 from fieldgen.errors import InputError
 from fieldgen.period import Piece
+from fieldgen.processes import map_days
 from fieldgen.readers.network import Network
 from fieldgen.scoring.hull import POSITIONS, local_plane, positions
 from fieldgen.scoring.leave_out import nearest_blocks, predict
@@ -75,8 +75,9 @@ def score_network(
     Raises InputError if the period is empty, or no step has enough stations to leave one out.
     """
     days = pieces_of(network, start, end)
+    scored = map_days(DayScorer(DayMaker(network)), days, jobs=jobs)
     scores = []
-    for piece, score in zip(days, _run(DayScorer(DayMaker(network)), days, jobs), strict=True):
+    for piece, score in zip(days, scored, strict=True):
         scores.append(score)
         progress(piece.name, len(days))
     score = _combine(scores, np.concatenate)
@@ -86,16 +87,6 @@ def score_network(
             "at least one. See `fieldgen check` for what was rejected."
         )
     return score
-
-
-def _run(scorer: DayScorer, days: list[Piece], jobs: int) -> Iterator[Score]:
-    """Scores of the days in their order, from one process or several."""
-    workers = min(jobs, len(days))
-    if workers == 1:
-        yield from map(scorer, days)
-        return
-    with ProcessPoolExecutor(workers) as pool:
-        yield from pool.map(scorer, days)
 
 
 @dataclass(frozen=True)
