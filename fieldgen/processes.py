@@ -10,7 +10,7 @@ _work: Callable | None = None
 
 
 def map_days(work: Callable, *arguments: list, jobs: int) -> Iterator:
-    """Results of `work` for each of the arguments, in their order, from `jobs` processes at most."""
+    """Results of `work` for each of the arguments, in their order, from up to `jobs` processes."""
     workers = min(jobs, len(arguments[0]))
     if workers == 1:
         yield from map(work, *arguments)
