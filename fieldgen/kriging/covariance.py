@@ -13,7 +13,6 @@ from collections.abc import Callable
 from typing import NamedTuple
 
 import numpy as np
-from scipy.spatial.distance import cdist
 
 _MATERN32_AT_RANGE = 4.7438645
 """Where (1 + x) exp(-x) is 0.05, so that the range means the same as for the exponential."""
@@ -163,4 +162,8 @@ def chord_positions(longitude, latitude):
 
 def distances(positions, other_positions):
     """Distances (n, m) [km] between positions (n, 3) and (m, 3) [km]."""
-    return cdist(positions, other_positions)
+    square = np.zeros((len(positions), len(other_positions)))
+    for here, there in zip(positions.T, other_positions.T, strict=True):
+        difference = np.subtract.outer(here, there)
+        square += np.square(difference, out=difference)
+    return np.sqrt(square, out=square)
