@@ -5,7 +5,6 @@ from __future__ import annotations
 from pathlib import Path
 
 import numpy as np
-import pyproj
 import xarray as xr
 
 from fieldgen.ground.grid import Grid
@@ -174,9 +173,8 @@ def _cell_bounds(centres, spacing: float):
 
 
 def _geographic_bounds(grid: Grid):
-    """West, south, east, north [degrees] of the outer edges."""
-    to_degrees = pyproj.Transformer.from_crs(grid.crs, "EPSG:4326", always_xy=True)
-    return to_degrees.transform_bounds(*grid.bounds)
+    longitude, latitude = grid.longitude_latitude
+    return longitude.min(), latitude.min(), longitude.max(), latitude.max()
 
 
 def _set_encoding(dataset: xr.Dataset) -> None:
