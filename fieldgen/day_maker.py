@@ -24,13 +24,13 @@ from fieldgen.report import DayReport, report_day
 from fieldgen.retrieval import retrieve_water_vapour
 from fieldgen.settings import Settings
 from fieldgen.station.heights import reduction_factor
-from fieldgen.station.screening import MEDIAN_HOURS, STATION_FLAGS
+from fieldgen.station.screening import MEDIAN_STEPS, STATION_FLAGS
 from fieldgen.station.surface_air import PRESSURE_SOURCES
 
 if TYPE_CHECKING:
     from fieldgen.products.maps import MapPainter
 
-STEPS_AFTER = MEDIAN_HOURS // 2
+STEPS_AFTER = MEDIAN_STEPS // 2
 """Steps after a day that the test for jumps looks at."""
 
 STEPS_FOR_LIMITS = 48

@@ -165,12 +165,13 @@ def _grid_delays(
     ids = list(stations.station.values)
     names = DelayRecords.values
     gridded = {name: np.full((len(time.stamps), len(ids)), np.nan) for name in names}
-    doubled = 0
+    doubled = early = 0
     for column, station in enumerate(ids):
         epoch, values = _series(delays, station)
         keep = _last_of_each(epoch)
         doubled += len(epoch) - len(keep)
         epoch, values = epoch[keep], {name: values[name][keep] for name in names}
+        early += int((epoch <= time.start).sum())
         spike = spikes(epoch, values["ztd"], SPIKE_WINDOW, settings.screening.spike)
         if spike.any():
             report.rejections.counts[f"station {station}", "spike within the hour"] += int(
@@ -183,6 +184,8 @@ def _grid_delays(
         report.warnings.append(
             f"{doubled} delays stand in more than one file; the file read last is used"
         )
+    if early:
+        report.rejections.counts["delays", "on the edge before the first whole step"] += early
     return xr.Dataset(
         {name: (("time", "station"), values) for name, values in gridded.items()},
         coords={"time": time.stamps.astype("datetime64[ns]"), "station": stations.station},

@@ -24,11 +24,11 @@ STATION_FLAGS = {
 """Bits of the station file's flag. `condemned`: the station as a whole is
 biased against its neighbours or disagrees so often that no hour of it is used."""
 
-MINIMUM_HOURS = 6
-"""Hours a station must report before it is judged as a whole."""
+MINIMUM_STEPS = 6
+"""Steps a station must report before it is judged as a whole."""
 
-MEDIAN_HOURS = 5
-"""Width of the running median that a jump is measured from: a front, which is a step, passes."""
+MEDIAN_STEPS = 5
+"""Width of the running median that a jump is measured from: a front, which is no spike, passes."""
 
 
 def formal_error_too_large(ztd_sigma, limit: float, ratio: float):
@@ -46,13 +46,13 @@ def _median(values):
 
 
 def jumps(water_vapour, limit: float):
-    """Values (t, n) bool that lie more than `limit` [kg m-2] from the running median of five hours.
+    """Values (t, n) bool that lie more than `limit` [kg m-2] from the running median of five steps.
 
     Fewer than three values in the window mark nothing.
     """
-    half = MEDIAN_HOURS // 2
+    half = MEDIAN_STEPS // 2
     padded = np.pad(water_vapour, ((half, half), (0, 0)), constant_values=np.nan)
-    window = np.lib.stride_tricks.sliding_window_view(padded, MEDIAN_HOURS, axis=0)
+    window = np.lib.stride_tricks.sliding_window_view(padded, MEDIAN_STEPS, axis=0)
     enough = np.isfinite(window).sum(axis=2) >= 3
     median = np.nanmedian(np.where(enough[..., None], window, 0.0), axis=2)
     with np.errstate(invalid="ignore"):
@@ -90,9 +90,9 @@ def biased_station(residual, sigma, *, ratio: float, difference: float) -> int |
 
     residual, sigma (t, n) of leaving each station out, NaN where it has no value. A station's
     median residual over the hours counts if it is above `difference` [kg m-2] and above `ratio`
-    times the median standard deviation; stations with fewer than six hours are not judged.
+    times the median standard deviation; stations with fewer than six steps are not judged.
     """
-    judged = np.isfinite(residual).sum(axis=0) >= MINIMUM_HOURS
+    judged = np.isfinite(residual).sum(axis=0) >= MINIMUM_STEPS
     bias = np.abs(_median(np.where(judged, residual, np.nan)))
     standardised = bias / _median(sigma)
     suspect = (bias > difference) & (standardised > ratio)
@@ -102,7 +102,7 @@ def biased_station(residual, sigma, *, ratio: float, difference: float) -> int |
 def often_gone(gone, tested, share: float):
     """Stations (n,) bool that disagree in more than `share` of the hours they were tested in.
 
-    gone, tested : (t, n) bool. Fewer than six tested hours condemn nobody.
+    gone, tested : (t, n) bool. Fewer than six tested steps condemn nobody.
     """
     count = tested.sum(axis=0)
-    return (count >= MINIMUM_HOURS) & (gone.sum(axis=0) > share * count)
+    return (count >= MINIMUM_STEPS) & (gone.sum(axis=0) > share * count)
