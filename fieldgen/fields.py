@@ -52,7 +52,7 @@ class Fields:
 
     pwv, sigma, at_reference : (t, ny, nx) int16, steps of 0.01 kg m-2, `MISSING` where missing
     flag : (t, ny, nx) int8, bits of `FIELD_FLAGS`
-    scale_height : (t,) [m], NaN where missing; station_count : (t,)
+    scale_height, scale_height_sigma : (t,) [m], NaN where missing; station_count : (t,)
     common_sigma, common_relative_sigma : (t,) [kg m-2], [1] what the cells' errors share
     clipped : cells and hours whose `pwv` was below zero, written as zero
     """
@@ -62,6 +62,7 @@ class Fields:
     at_reference: np.ndarray
     flag: np.ndarray
     scale_height: np.ndarray
+    scale_height_sigma: np.ndarray
     station_count: np.ndarray
     common_sigma: np.ndarray
     common_relative_sigma: np.ndarray
@@ -212,15 +213,17 @@ def _empty(day: Day, cells: CellMaker) -> Fields:
     steps = len(day.makable)
     flag = np.tile((FIELD_FLAGS["sea"] * cells.is_sea).astype(np.int8), (steps, 1))
     flag[~day.makable] |= FIELD_FLAGS["too_few_stations"]
-    scale_height = np.full(steps, np.nan)
+    scale_height, sigma = np.full((2, steps), np.nan)
     if day.model is not None:
         scale_height[day.makable] = day.model.scale_height[day.makable]
+        sigma[day.makable] = day.model.scale_height_sigma[day.makable]
     used = (day.stations.flag.values == 0).sum(axis=1)
     shape = (steps, *cells.shape)
     return Fields(
         *(np.full(shape, MISSING, np.int16) for _ in range(3)),
         flag=flag.reshape(shape),
         scale_height=scale_height,
+        scale_height_sigma=sigma,
         station_count=used.astype(np.int16),
         common_sigma=day.stations.common_sigma.values,
         common_relative_sigma=day.stations.common_relative_sigma.values,

@@ -84,6 +84,9 @@ QUANTITIES = {
         content="auxiliaryInformation",
     ),
     "scale_height": Quantity("m", "", "scale height of precipitable water vapour"),
+    "scale_height_sigma": Quantity(
+        "m", "", "standard error of the scale height", content="qualityInformation"
+    ),
     "station_count": Quantity(
         "1",
         "number_of_observations",

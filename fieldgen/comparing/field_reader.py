@@ -17,16 +17,13 @@ from fieldgen.errors import InputError
 from fieldgen.quantities import PACKED_STEP
 
 NEEDED = (
-    "pwv", "pwv_sigma", "flag", "terrain", "scale_height", "time_bnds", "x", "y", "crs",
+    "pwv", "pwv_sigma", "flag", "terrain", "scale_height", "scale_height_sigma", "time_bnds", "x",
+    "y", "crs",
 )  # fmt: skip
 """Variables of a field file that are used."""
 
 ATTRIBUTES = {"crs": "crs_wkt", "flag": "flag_masks"}
 """Attributes of variables that are used."""
-
-SCALE_HEIGHT_SIGMA = 400.0
-"""Standard error of a scale height [m] where the file does not tell it: what is known without any
-station, so error bars far from the terrain are rather too large."""
 
 
 class Sample(NamedTuple):
@@ -119,7 +116,7 @@ class FieldFile:
         value = np.exp(_weighted(corners, logarithm))
         own = _weighted(corners, sigma * np.exp(lift))
         way = np.abs(self.terrain_at(corners) - height)
-        total = np.hypot(own, value * way * SCALE_HEIGHT_SIGMA / scale**2)
+        total = np.hypot(own, value * way * float(cells.scale_height_sigma) / scale**2)
         bits = np.bitwise_or.reduce(np.where(counts, flag.astype(int), 0), axis=0)
         return Sample(value, total, bits)
 

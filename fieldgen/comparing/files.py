@@ -7,7 +7,6 @@ from pathlib import Path
 import numpy as np
 
 from fieldgen.comparing.comparison import Comparison
-from fieldgen.comparing.field_reader import SCALE_HEIGHT_SIGMA
 from fieldgen.comparing.observations import SOUNDING_SIGMA
 from fieldgen.products.metadata import format_time
 from fieldgen.scoring.figures import reliability
@@ -23,9 +22,8 @@ SIGN = "Errors are the field less the observation: positive where the field is t
 METHOD = {
     "field": "Each of the four cells around an observation is brought from its mean terrain to the "
     "observation's height with the scale height of the step; their logarithms are interpolated.",
-    "field_sigma": "The cells' standard error, and the scale height's own, taken as "
-    f"{SCALE_HEIGHT_SIGMA:g} m, over the height between the terrain and the observation. What "
-    "varies within the step counts as error.",
+    "field_sigma": "The cells' standard error, and the scale height's own over the height between "
+    "the terrain and the observation. What varies within the step counts as error.",
     "time": "A step holds the observations after its start up to its end.",
 }
 

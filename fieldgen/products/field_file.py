@@ -43,8 +43,8 @@ def packed_dataset(
     """Dataset of packed fields with all CF attributes; dimensions time, y, x.
 
     terrain_height (ny, nx) [m]; time (t,) datetime64; fields: packed pwv, sigma, at_reference, and
-    flag (t, ny, nx), scale_height, station_count and the parts of the common error (t,);
-    processing: text that says how it was made
+    flag (t, ny, nx), scale_height and its sigma, station_count and the parts of the common error
+    (t,); processing: text that says how it was made
     """
     space = ("time", "y", "x")
     dataset = xr.Dataset(
@@ -56,7 +56,17 @@ def packed_dataset(
             ),
             "flag": (space, fields.flag, _flag_attributes(flag_bits)),
             "terrain": (("y", "x"), terrain_height, _terrain_attributes()),
-            "scale_height": ("time", fields.scale_height, QUANTITIES["scale_height"].attributes()),
+            "scale_height": (
+                "time",
+                fields.scale_height,
+                QUANTITIES["scale_height"].attributes()
+                | {"ancillary_variables": "scale_height_sigma"},
+            ),
+            "scale_height_sigma": (
+                "time",
+                fields.scale_height_sigma,
+                QUANTITIES["scale_height_sigma"].attributes(),
+            ),
             "station_count": (
                 "time", fields.station_count, QUANTITIES["station_count"].attributes()
             ),
@@ -182,7 +192,8 @@ def _set_encoding(dataset: xr.Dataset) -> None:
     for name in ("pwv", "pwv_sigma", "pwv_at_reference", "flag"):
         dataset[name].encoding = {**COMPRESSION, **chunks}
     dataset["terrain"].encoding = {"dtype": "float32", "_FillValue": None, **COMPRESSION}
-    dataset["scale_height"].encoding = {"dtype": "float32", "_FillValue": np.float32(-9999.0)}
+    for name in ("scale_height", "scale_height_sigma"):
+        dataset[name].encoding = {"dtype": "float32", "_FillValue": np.float32(-9999.0)}
     for name in ("common_sigma", "common_relative_sigma"):
         dataset[name].encoding = {"dtype": "float32", "_FillValue": None}
     dataset["station_count"].encoding = {"dtype": "int16", "_FillValue": None}

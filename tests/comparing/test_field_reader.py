@@ -6,7 +6,6 @@ import pytest
 import xarray as xr
 
 from fieldgen.comparing.field_reader import (
-    SCALE_HEIGHT_SIGMA,
     Corners,
     matching_steps,
     open_fields,
@@ -30,6 +29,7 @@ def write_fields(path, start="2026-03-01T00:00", steps=2, scale=2000.0, **change
                  {"flag_masks": np.array([1, 16], np.int8), "flag_meanings": "high sea"}),
         "terrain": (("y", "x"), TERRAIN),
         "scale_height": ("time", np.full(steps, scale)),
+        "scale_height_sigma": ("time", np.full(steps, 300.0)),
         "time_bnds": (("time", "bounds"),
                       np.stack([time - np.timedelta64(3600, "s"), time], axis=1)),
         "crs": ((), 0, {"crs_wkt": pyproj.CRS("EPSG:32626").to_wkt()}),
@@ -74,7 +74,7 @@ def test_sigma_counts_the_scale_height_over_the_way(file):
     assert own.sigma[0] == pytest.approx(0.5, rel=1e-3)
     above = file.sample(0, corners, np.array([1300.0]))
     lifted = 20.0 * np.exp(-1300.0 / 2000.0)
-    by_height = lifted * 1000.0 * SCALE_HEIGHT_SIGMA / 2000.0**2
+    by_height = lifted * 1000.0 * 300.0 / 2000.0**2
     expected = np.hypot(0.5 * np.exp(-0.5), by_height)
     assert above.sigma[0] == pytest.approx(expected, rel=1e-3)
 

@@ -27,7 +27,7 @@ START, END = "2026-09-08T00:00Z", "2026-09-09T00:00Z"
 
 NO_STANDARD_NAME = {
     "ztd", "zhd", "zwd", "ztd_sigma", "mean_temperature", "scale_height", "residual",
-    "residual_sigma", "common_sigma", "common_relative_sigma",
+    "residual_sigma", "common_sigma", "common_relative_sigma", "scale_height_sigma",
 }  # fmt: skip
 """Variables for whose quantity the CF table has no name; ACDD recommends one for all."""
 
