@@ -2,6 +2,7 @@
 
 import filecmp
 import json
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -12,7 +13,10 @@ from fieldgen.chain import make
 from fieldgen.errors import InputError
 from fieldgen.fields import FIELD_FLAGS
 from fieldgen.period import parse_time
+from fieldgen.retrieval import retrieve_water_vapour
 from tests.scene import SETTINGS, write_scene
+
+DEMO = Path(__file__).parents[1] / "demo_network"
 
 
 def flagged(dataset, name):
@@ -202,3 +206,40 @@ def test_atomic_write_leaves_the_old_file_when_the_new_fails(tmp_path):
         raise RuntimeError
     assert filecmp.cmp(path, copy, shallow=False)
     assert sorted(item.name for item in tmp_path.iterdir()) == ["a.txt", "copy.txt"]
+
+
+def test_atomic_write_leaves_a_reader_the_file_it_opened(tmp_path):
+    """Round trip: the new file takes the name, it is not written into the old one."""
+    from fieldgen.products.atomic import whole_file
+
+    path = tmp_path / "a.txt"
+    path.write_text("old")
+    with path.open() as reader:
+        with whole_file(path) as temporary:
+            temporary.write_text("new")
+        assert reader.read() == "old"
+    assert path.read_text() == "new"
+
+
+def test_days_without_a_record_are_not_made(tmp_path):
+    """A limit: a mistyped year must not make thousands of empty days."""
+    path = write_scene(tmp_path)
+    last = (tmp_path / "delays.csv").read_text().splitlines()[-1].replace("2026-03", "2026-06")
+    with (tmp_path / "delays.csv").open("a") as file:
+        file.write(last + "\n")
+    make(fieldgen.read_network(path), tmp_path / "out")
+    files = sorted(file.name for file in (tmp_path / "out/fields").iterdir())
+    assert files == ["pwv_20260301.nc", "pwv_20260601.nc"]
+
+
+def test_station_error_counts_what_all_stations_share():
+    """A second derivation on the demo: the whole error is the own and the common part together."""
+    network = fieldgen.read_network(DEMO / "network.toml")
+    stations = retrieve_water_vapour(network, slice(0, 6))
+    pwv = stations.pwv.values
+    relative = 4.74 / stations.mean_temperature.values  # of Tm, Bevis et al. 1992
+    common = np.hypot(network.settings.retrieval.common_sigma, relative * pwv)
+    whole = np.hypot(stations.pwv_independent_sigma.values, common)
+    known = np.isfinite(pwv)
+    np.testing.assert_allclose(stations.pwv_sigma.values[known], whole[known], rtol=0.03)
+    assert (stations.pwv_sigma.values[known] > stations.pwv_independent_sigma.values[known]).all()

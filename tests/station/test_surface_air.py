@@ -124,3 +124,15 @@ def test_screen_barometers_leaves_a_gradient_alone():
     weather = weather._replace(pressure=weather.pressure + slope)
     assert np.ptp(slope) > 25.0
     assert not screen_barometers(weather, barometers, 0.3, 4.0)[0].any()
+
+
+@pytest.mark.parametrize(("error", "rejected"), [(2.0, False), (20.0, True)])
+def test_screen_barometers_allows_for_the_way_up(error, rejected):
+    """Negative control: 2000 m above the others, 2 hPa is what an inversion does, 20 hPa is not,
+    whatever the limit."""
+    barometers = sites([10.0, 20.0, 30.0, 15.0, 25.0, 40.0, 2000.0])
+    weather = dry_weather(barometers)
+    weather.pressure[:, -1] += error
+    found, _ = screen_barometers(weather, barometers, 0.3, 1.0)
+    assert found[:, -1].all() == rejected
+    assert not found[:, :-1].any()
