@@ -135,15 +135,12 @@ def analyse_day(
 ) -> Day:
     """Analysis of the hours first <= index < last of `stations`, all of one day.
 
-    stations : what `retrieve_water_vapour` returns, with the window before the day
+    stations : what `retrieve_water_vapour` returns; all its hours before `last` are the window
     places : of all stations, see `locate`
     """
-    step = settings.network.time_step
-    start = max(last - int(settings.kriging.window / step), 0)
-    start = min(start, first)
-    day = slice(first - start, last - start)
-    window = _make_window(settings, stations, places, slice(start, last), day)
-    of_day = stations.isel(time=slice(first, last))
+    day = slice(first, last)
+    window = _make_window(settings, stations, places, day)
+    of_day = stations.isel(time=day)
     if window is None:
         nothing = np.full(of_day.flag.shape, np.nan)
         return Day(None, None, np.zeros(last - first, bool), _assign(of_day, 0, nothing, nothing))
@@ -153,8 +150,9 @@ def analyse_day(
     return Day(window, model, _makable(model), of_day)
 
 
-def _make_window(settings: Settings, stations: xr.Dataset, places: Places, rows: slice, day: slice):
-    """Window of the rows of time; None if fewer than two stations report in it."""
+def _make_window(settings: Settings, stations: xr.Dataset, places: Places, day: slice):
+    """Window of the hours that end with the day; None if fewer than two stations report in it."""
+    rows = slice(day.stop)
     usable = np.where(stations.flag.values[rows] == 0, stations.pwv.values[rows], np.nan)
     index = np.flatnonzero(np.isfinite(usable).any(axis=0))
     if len(index) < 2:
@@ -179,6 +177,8 @@ def _model_window(settings: Settings, window: Window):
         disagree, out = _screen(settings.screening, window, model)
         good = present & ~disagree & ~out
         if (good == trusted).all():
+            if settings.kriging.covariance == model.fit.covariance.model:
+                return model, disagree, out
             break
         trusted = good
     return _fit_model(settings, window, trusted, model, settings.kriging.covariance), disagree, out

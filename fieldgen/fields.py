@@ -68,22 +68,21 @@ class Fields:
     common_relative_sigma: np.ndarray
     clipped: int = 0
 
+    def arrays(self) -> dict[str, np.ndarray]:
+        """All that runs along time, by name."""
+        return {one.name: getattr(self, one.name) for one in fields(self) if one.name != "clipped"}
+
     def steps(self, rows: slice) -> Fields:
         """The fields of some steps."""
-        arrays = {
-            one.name: getattr(self, one.name) for one in fields(self) if one.name != "clipped"
-        }
-        return Fields(**{name: array[rows] for name, array in arrays.items()}, clipped=self.clipped)
+        arrays = {name: array[rows] for name, array in self.arrays().items()}
+        return Fields(**arrays, clipped=self.clipped)
 
 
 def join_fields(parts: list[Fields]) -> Fields:
     """Fields of several days, one after the other."""
-    arrays = {
-        one.name: np.concatenate([getattr(part, one.name) for part in parts])
-        for one in fields(Fields)
-        if one.name != "clipped"
-    }
-    return Fields(**arrays, clipped=sum(part.clipped for part in parts))
+    arrays = [part.arrays() for part in parts]
+    joined = {name: np.concatenate([one[name] for one in arrays]) for name in arrays[0]}
+    return Fields(**joined, clipped=sum(part.clipped for part in parts))
 
 
 @dataclass(frozen=True)

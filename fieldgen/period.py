@@ -42,8 +42,13 @@ def parse_time(text: str) -> np.datetime64:
 def check_period(start: str | None, end: str | None) -> None:
     """Raise InputError for times that cannot be, before anything is read."""
     times = [parse_time(text) if text else None for text in (start, end)]
-    if None not in times and times[0] >= times[1]:
-        raise InputError(f"period: start {_text(times[0])} is not before end {_text(times[1])}.")
+    if None not in times:
+        _check_order(*times)
+
+
+def _check_order(start, end) -> None:
+    if start >= end:
+        raise InputError(f"period: start {_text(start)} is not before end {_text(end)}.")
 
 
 def pieces(time, step: np.timedelta64, has_data, start: str | None, end: str | None) -> list[Piece]:
@@ -55,8 +60,7 @@ def pieces(time, step: np.timedelta64, has_data, start: str | None, end: str | N
     """
     low = parse_time(start) if start else time[0] - step
     high = parse_time(end) if end else time[-1]
-    if low >= high:
-        raise InputError(f"period: start {_text(low)} is not before end {_text(high)}.")
+    _check_order(low, high)
     asked = (time - step >= low) & (time <= high)
     days = (time - step).astype("datetime64[D]")
     found = [_piece(day, np.flatnonzero(days == day), asked) for day in np.unique(days[asked])]

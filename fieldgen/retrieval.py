@@ -8,6 +8,7 @@ import xarray as xr
 from fieldgen.constants import REFRACTIVITY
 from fieldgen.quantities import QUANTITIES
 from fieldgen.readers.network import Network
+from fieldgen.readers.places import sites_of
 from fieldgen.settings import RetrievalTable, Settings
 from fieldgen.station.delay import (
     common_sigma,
@@ -18,7 +19,6 @@ from fieldgen.station.delay import (
 )
 from fieldgen.station.screening import STATION_FLAGS, formal_error_too_large, jumps
 from fieldgen.station.surface_air import (
-    Sites,
     SurfaceAir,
     Weather,
     own_barometer,
@@ -108,12 +108,6 @@ def _air_at_antennas(settings: Settings, stations: xr.Dataset, weather: xr.Datas
     )
     found = {"barometer_rejected": rejected, "barometer_residual": residual}
     return air, {name: (("time", "site"), values) for name, values in found.items()}
-
-
-def sites_of(dataset: xr.Dataset) -> Sites:
-    """Places of the stations or barometers of a dataset."""
-    names = ("longitude", "latitude", "orthometric_height")
-    return Sites(*(dataset[name].values for name in names))
 
 
 def _realistic_ztd_sigma(formal, settings: RetrievalTable):

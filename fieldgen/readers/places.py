@@ -263,14 +263,17 @@ def locate_sites(
     )
 
 
+def sites_of(dataset: xr.Dataset) -> Sites:
+    """Places of the stations or barometers of a dataset."""
+    names = ("longitude", "latitude", "orthometric_height")
+    return Sites(*(dataset[name].values for name in names))
+
+
 def report_climbs(
     settings: Settings, stations: xr.Dataset, sites: xr.Dataset, report: ReadingReport
 ) -> None:
     """Report antennas that are listed far above or below their own barometer."""
-    antennas, barometers = (
-        Sites(*(places[name].values for name in ("longitude", "latitude", "orthometric_height")))
-        for places in (stations, sites)
-    )
+    antennas, barometers = sites_of(stations), sites_of(sites)
     own = own_barometer(antennas, barometers, settings.retrieval.barometer_distance)
     for index in np.flatnonzero(own >= 0):
         climb = antennas.height[index] - barometers.height[own[index]]
