@@ -2,19 +2,23 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from pathlib import Path
 
 import numpy as np
 import xarray as xr
 
-from fieldgen.day_maker import DayMaker, DayWriter, colour_limits
+from fieldgen.day_maker import DayMaker, DayWriter, Task, colour_limits
 from fieldgen.fields import join_fields
 from fieldgen.period import Piece, pieces
 from fieldgen.processes import map_days
 from fieldgen.products.field_file import unpack_fields
+from fieldgen.products.lines import copy_lines
 from fieldgen.readers.network import Network
-from fieldgen.report import RunReport
+from fieldgen.report import DayReport, RunReport
+from fieldgen.upkeep.fingerprint import Fingerprints
+from fieldgen.upkeep.inputs import forget_inputs
+from fieldgen.upkeep.lock import hold
 
 
 def make_fields(network: Network, start: str | None = None, end: str | None = None) -> xr.Dataset:
@@ -48,19 +52,51 @@ def make(
     Every day that the period touches is made whole; maps are drawn of the period alone.
     jobs : processes that share the days; results do not depend on it
     progress : called with the name of each day when it is done, and the number of days
-    Raises InputError if the period is empty, OutputError if the folder cannot be written.
+    Raises InputError if the period is empty, OutputError if the folder cannot be written,
+    BusyError if another run is at work in it.
     """
     days = pieces_of(network, start, end)
-    limits = colour_limits(network, days[0].first, days[-1].last)
-    writer = DayWriter(DayMaker(network), folder, limits)
-    reports = []
-    maps = _maps_by_day(network.settings.products.maps, days)
-    for report in map_days(writer, days, maps, jobs=jobs):
-        reports.append(report)
-        progress(report.name, len(days))
-    run = RunReport.of(network, folder, reports)
+    maps = network.settings.products.maps
+    tasks = [Task(day, maps_of_day(maps, day is days[-1])) for day in days]
+    with hold(folder):
+        writer = DayWriter(
+            DayMaker(network),
+            folder,
+            colour_limits(network, days[0].first, days[-1].last),
+            Fingerprints.of(network),
+        )
+        reports = []
+        for report in make_days(writer, tasks, jobs):
+            reports.append(report)
+            progress(report.name, len(days))
+        return finish_run(writer, reports)
+
+
+def make_days(writer: DayWriter, tasks: list[Task], jobs: int) -> Iterator[DayReport]:
+    """Reports of days as they are made, in their order, by up to `jobs` processes.
+
+    The folder must be held by the caller.
+    """
+    forget_inputs(writer.folder)
+    yield from map_days(writer, tasks, jobs=jobs)
+
+
+def finish_run(writer: DayWriter, reports: list[DayReport]) -> RunReport:
+    """What stands when all days are made: the newest map, the lines drawn, run.json."""
+    network, folder = writer.maker.network, writer.folder
+    if network.settings.products.maps == "all":
+        from fieldgen.products.maps import copy_newest
+
+        copy_newest(folder / "maps")
+    copy_lines(network.settings, folder / "lines")
+    run = RunReport.of(network, folder, reports, writer.limits)
     run.write(folder / "run.json")
     return run
+
+
+def maps_of_day(maps: str, is_last: bool) -> str:
+    """Which maps a day draws: the latest one belongs to the last day."""
+    return "none" if maps == "latest" and not is_last else maps
 
 
 def pieces_of(network: Network, start: str | None, end: str | None) -> list[Piece]:
@@ -69,8 +105,3 @@ def pieces_of(network: Network, start: str | None, end: str | None) -> list[Piec
     delays = network.delays
     has_data = np.isfinite(delays.ztd.values) | np.isfinite(delays.pwv.values)
     return pieces(delays.time.values, step, has_data.any(axis=1), start, end)
-
-
-def _maps_by_day(maps: str, days: list[Piece]) -> list[str]:
-    """Which maps each day draws: the latest one belongs to the last day."""
-    return ["none"] * (len(days) - 1) + ["latest"] if maps == "latest" else [maps] * len(days)

@@ -26,6 +26,8 @@ from fieldgen.settings import Settings
 from fieldgen.station.heights import reduction_factor
 from fieldgen.station.screening import MEDIAN_STEPS, STATION_FLAGS
 from fieldgen.station.surface_air import PRESSURE_SOURCES
+from fieldgen.upkeep.day_record import DayRecord, read_day_record, sizes_of
+from fieldgen.upkeep.fingerprint import Fingerprints, fingerprint_maps
 
 if TYPE_CHECKING:
     from fieldgen.products.maps import MapPainter
@@ -56,14 +58,18 @@ class DayMaker:
         reference = reference_height(network.settings, network.stations)
         return CellMaker(network.grid, network.terrain, *self._places, reference)
 
-    def analyse(self, piece: Piece) -> Day:
-        """Model of a day."""
+    def rows(self, piece: Piece) -> slice:
+        """The steps of the input that a day is made from."""
         settings = self.network.settings
         window = int(settings.kriging.window / settings.network.time_step)
-        start = min(max(piece.last - window, 0), piece.first)
-        stations = retrieve_water_vapour(self.network, slice(start, piece.last + STEPS_AFTER))
-        places = self._places[1]
-        return analyse_day(settings, stations, places, piece.first - start, piece.last - start)
+        return slice(min(max(piece.last - window, 0), piece.first), piece.last + STEPS_AFTER)
+
+    def analyse(self, piece: Piece) -> Day:
+        """Model of a day."""
+        rows = self.rows(piece)
+        stations = retrieve_water_vapour(self.network, rows)
+        first, last = piece.first - rows.start, piece.last - rows.start
+        return analyse_day(self.network.settings, stations, self._places[1], first, last)
 
     def compute(self, piece: Piece) -> tuple[Day, Fields]:
         """Model and fields of a day."""
@@ -96,6 +102,19 @@ class DayMaker:
         )
 
 
+@dataclass(frozen=True)
+class Task:
+    """What is to be done with a day.
+
+    maps : "all" of the hours asked for, the "latest" of them, or "none"
+    only_maps : the day's other files are there already, and stay as they are
+    """
+
+    piece: Piece
+    maps: str
+    only_maps: bool = False
+
+
 @dataclass
 class DayWriter:
     """Makes days and writes their files below a folder.
@@ -107,10 +126,13 @@ class DayWriter:
     maker: DayMaker
     folder: Path
     limits: tuple[float, float]
+    fingerprints: Fingerprints
     painter: MapPainter | None = None
 
-    def __call__(self, piece: Piece, maps: str) -> DayReport:
-        """Make, write and draw one day; maps: which of its hours are drawn."""
+    def __call__(self, task: Task) -> DayReport:
+        """Make, write and draw one day. Its record is written last: without it, the day is made
+        anew by the next update."""
+        piece = task.piece
         day, fields = self.maker.compute(piece)
         dataset = self.maker.packed_dataset(day.stations.time.values, fields)
         stations = self.maker.station_dataset(day)
@@ -118,24 +140,50 @@ class DayWriter:
             self.folder / "fields" / f"pwv_{piece.name}.nc",
             self.folder / "stations" / f"stations_{piece.name}.nc",
         ]
-        write_fields(dataset, paths[0])
-        write_stations(stations, paths[1])
-        if maps != "none":
-            paths += self._draw(piece, dataset, stations, maps)
+        if not task.only_maps:
+            write_fields(dataset, paths[0])
+            write_stations(stations, paths[1])
+        paths += self._draw(task, dataset, stations)
         files = [str(path.relative_to(self.folder)) for path in paths]
-        return report_day(piece.name, day, fields, files)
+        report = report_day(piece.name, day, fields, files)
+        self._record(task, report)
+        return report
 
-    def _draw(
-        self, piece: Piece, dataset: xr.Dataset, stations: xr.Dataset, maps: str
-    ) -> list[Path]:
-        from fieldgen.products.maps import write_maps
+    def _record(self, task: Task, report: DayReport) -> None:
+        """Leave the day's record; maps that the day no longer has are removed."""
+        piece = task.piece
+        whole = task.maps == "latest" or piece.asked == slice(0, piece.last - piece.first)
+        maps = self.maker.network.settings
+        before = read_day_record(self.folder, piece.name)
+        record = DayRecord(
+            shared=self.fingerprints.shared,
+            window=self.fingerprints.of_steps(self.maker.rows(piece)),
+            steps=self.fingerprints.stamps[piece.first : piece.last],
+            maps=fingerprint_maps(maps, self.limits) if whole else "",
+            files=sizes_of(self.folder, report.files),
+            report=report,
+        )
+        if before is not None and whole:
+            for name in before.files.keys() - record.files.keys():
+                (self.folder / name).unlink(missing_ok=True)
+        record.write(self.folder)
 
-        steps = [piece.asked.stop - 1] if maps == "latest" else piece.asked
+    def _draw(self, task: Task, dataset: xr.Dataset, stations: xr.Dataset) -> list[Path]:
+        """Draw what the task says; returns the maps of hours."""
+        if task.maps == "none":
+            return []
+        from fieldgen.products.maps import write_latest, write_maps
+
+        steps = task.piece.asked
         dataset, stations = dataset.isel(time=steps), stations.isel(time=steps)
         dataset = unpack_fields(dataset)
         if self.painter is None:
             self.painter = self._make_painter(dataset)
-        return write_maps(dataset, stations, self.folder / "maps", self.painter)
+        drawn = (dataset, stations, self.folder / "maps", self.painter)
+        if task.maps == "latest":
+            write_latest(*drawn)
+            return []
+        return write_maps(*drawn)
 
     def _make_painter(self, dataset: xr.Dataset):
         from fieldgen.products.maps import MapPainter, read_geometries

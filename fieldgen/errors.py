@@ -7,6 +7,8 @@ A message reads ``<where>: <name> is <value with unit>, expected <rule>. <next s
 class FieldgenError(Exception):
     """Any problem that fieldgen can explain to the person who meets it."""
 
+    exit_status = 1
+
 
 class SettingsError(FieldgenError):
     """The settings file cannot be used; the message lists every problem in it."""
@@ -22,3 +24,9 @@ class GridError(FieldgenError):
 
 class OutputError(FieldgenError):
     """A product cannot be written."""
+
+
+class BusyError(FieldgenError):
+    """Another run is at work in the output folder."""
+
+    exit_status = 3

@@ -126,20 +126,23 @@ def _rejected(day: Day) -> dict[str, dict[str, int]]:
 
 @dataclass(frozen=True)
 class RunReport:
-    """A run: what it read and the reports of its days."""
+    """A run: what it read and the reports of its days; limits of the maps' colours [kg m-2]."""
 
     settings: dict
     stations: list[str]
     reading: ReadingReport
     days: list[DayReport]
     folder: Path
+    limits: tuple[float, float]
 
     @classmethod
-    def of(cls, network: Network, folder: Path, days: list[DayReport]) -> RunReport:
+    def of(
+        cls, network: Network, folder: Path, days: list[DayReport], limits: tuple[float, float]
+    ) -> RunReport:
         """Report of a finished run."""
         settings = network.settings.model_dump(mode="json", exclude={"folder"})
         stations = [str(station) for station in network.stations.station.values]
-        return cls(settings, stations, network.report, days, folder)
+        return cls(settings, stations, network.report, days, folder, limits)
 
     def as_dict(self) -> dict:
         """The content of run.json."""
@@ -150,6 +153,7 @@ class RunReport:
             "command": sys.argv[1:],
             "settings": self.settings,
             "read": reading_as_dict(self.reading),
+            "colour_limits": [float(limit) for limit in self.limits],
             "stations": self.stations,
             "days": [vars(day) for day in self.days],
             "warnings": self.barometer_warnings(),

@@ -229,6 +229,13 @@ class ProductsTable(_Table):
     )
     coast: Path | None = None
     rivers: Path | None = None
+    catchments: Path | None = None
+
+    @property
+    def lines(self) -> dict[str, Path]:
+        """The files of lines that are set, by name."""
+        files = {"coast": self.coast, "rivers": self.rivers, "catchments": self.catchments}
+        return {name: path for name, path in files.items() if path is not None}
 
 
 class Settings(_Table):

@@ -4,7 +4,8 @@ import os
 
 import pytest
 
-from fieldgen.cli import folder_name, main
+from fieldgen.cli import main
+from fieldgen.commands.arguments import folder_name
 from tests.scene import SETTINGS, write_scene
 
 

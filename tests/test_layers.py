@@ -21,9 +21,12 @@ LAYERS = [
     ["retrieval", "analysis", "period"],
     ["fields"],
     ["report"],
+    ["upkeep"],
     ["day_maker"],
     ["chain", "summary", "progress", "text_table", "scoring"],
+    ["log", "update", "status"],
     ["comparing"],
+    ["commands"],
     ["cli"],
 ]
 """From the bottom to the top; a module may import its own layer and those below."""

@@ -23,6 +23,7 @@ def whole_file(path: Path) -> Iterator[Path]:
         with temporary.open("rb") as file:
             os.fsync(file.fileno())
         os.replace(temporary, path)
+        _sync_folder(path.parent)
     except OSError as error:
         reason = error.strerror or str(error)
         raise OutputError(f"{path}: cannot be written: {reason}.") from None
@@ -33,3 +34,14 @@ def whole_file(path: Path) -> Iterator[Path]:
     finally:
         with suppress(OSError):
             temporary.unlink(missing_ok=True)
+
+
+def _sync_folder(folder: Path) -> None:
+    """Make the new name outlast a power cut, where the system can do so."""
+    if not hasattr(os, "O_DIRECTORY"):
+        return
+    number = os.open(folder, os.O_RDONLY | os.O_DIRECTORY)
+    try:
+        os.fsync(number)
+    finally:
+        os.close(number)

@@ -81,9 +81,8 @@ def read_network(path: str | Path, progress: Callable[[str], None] = lambda file
 
 def _check_lines(settings: Settings) -> None:
     """Raise InputError for lines of the maps that are not there, before the work begins."""
-    for name in ("coast", "rivers"):
-        path = getattr(settings.products, name)
-        if path is not None and not settings.path(path).is_file():
+    for name, path in settings.products.lines.items():
+        if not settings.path(path).is_file():
             raise InputError(f"products.{name}: {settings.path(path)} is not a file.")
 
 

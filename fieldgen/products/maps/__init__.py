@@ -9,8 +9,8 @@ In all modules here, pictures are arrays (row, column, channel) with the top row
 have the south row first. Positions on a picture are counted in pixels from its lower left corner.
 """
 
-from fieldgen.products.maps.files import write_maps
+from fieldgen.products.maps.files import copy_newest, write_latest, write_maps
 from fieldgen.products.maps.geometries import read_geometries
 from fieldgen.products.maps.painter import MapPainter
 
-__all__ = ["MapPainter", "read_geometries", "write_maps"]
+__all__ = ["MapPainter", "copy_newest", "read_geometries", "write_latest", "write_maps"]

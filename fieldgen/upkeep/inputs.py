@@ -1,0 +1,82 @@
+"""Whether any input file changed since the last update, seen from sizes and times alone."""
+
+from __future__ import annotations
+
+import json
+import time
+from collections.abc import Iterator
+from pathlib import Path
+
+from pydantic import BaseModel
+
+from fieldgen.products.atomic import whole_file
+from fieldgen.products.metadata import fieldgen_version
+from fieldgen.readers.network import find_files
+from fieldgen.settings import Settings
+from fieldgen.upkeep.lock import STATE
+
+UNSURE_SECONDS = 2.0
+"""A file that changed this short a time ago may change again without showing it: its time is not
+trusted, and the next update reads it again."""
+
+UNSURE = -1
+"""Stands for a time that is not trusted."""
+
+
+def list_inputs(path: Path, settings: Settings) -> dict:
+    """What the products are made from: fieldgen's version, and size and time of every input file.
+
+    path : of the settings file
+    Raises InputError as `find_files` does.
+    """
+    kinds = [name for name, patterns in settings.stations if isinstance(patterns, list)]
+    found = [file for kind in kinds for file in find_files(settings, kind)]
+    files = {str(file): _size_and_time(file) for file in [path, *found, *_named_files(settings)]}
+    return {"fieldgen_version": fieldgen_version(), "files": files}
+
+
+def unchanged_days(folder: Path, inputs: dict) -> list[str] | None:
+    """Days that the last finished update stood for, if it found the same inputs, all of them long
+    at rest; None otherwise.
+
+    inputs : of `list_inputs`
+    """
+    try:
+        before = json.loads(_path(folder).read_text(encoding="utf-8"))
+        days = before.pop("days")
+    except (OSError, ValueError, KeyError):
+        return None
+    at_rest = all(one is None or one[1] != UNSURE for one in inputs["files"].values())
+    return days if before == inputs and at_rest else None
+
+
+def forget_inputs(folder: Path) -> None:
+    """Forget what products were made from, before they change."""
+    _path(folder).unlink(missing_ok=True)
+
+
+def write_inputs(folder: Path, inputs: dict, days: list[str]) -> None:
+    """Remember, when all `days` are made, what they were made from."""
+    with whole_file(_path(folder)) as temporary:
+        temporary.write_text(json.dumps(inputs | {"days": days}), encoding="utf-8")
+
+
+def _named_files(settings: Settings) -> Iterator[Path]:
+    """Files that the settings name one by one: terrain, geoid, table, lines."""
+    tables = (value for _, value in settings if isinstance(value, BaseModel))
+    for table in tables:
+        yield from (settings.path(value) for _, value in table if isinstance(value, Path))
+
+
+def _size_and_time(path: Path) -> list[int] | None:
+    """Size [bytes] and time of the last change [ns]; None for a file that is not there."""
+    try:
+        status = path.stat()
+    except OSError:
+        return None
+    age = time.time() - status.st_mtime
+    return [status.st_size, status.st_mtime_ns if age > UNSURE_SECONDS else UNSURE]
+
+
+def _path(folder: Path) -> Path:
+    return folder / STATE / "inputs.json"
