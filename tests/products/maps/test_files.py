@@ -8,28 +8,38 @@ from PIL import Image
 
 from fieldgen.errors import OutputError
 from fieldgen.products import look
-from fieldgen.products.maps import write_maps
+from fieldgen.products.maps import copy_newest, write_latest, write_maps
 from fieldgen.products.maps.files import write_picture
 from tests.products.maps.invented import hex_bytes, make_island, make_painter, make_stations
 
 
-def test_write_maps_leaves_one_picture_an_hour_and_the_newest(tmp_path, island, painter):
+def test_write_maps_leaves_one_picture_an_hour(tmp_path, island, painter):
     folder = tmp_path / "new" / "maps"
     paths = write_maps(island, make_stations(island, [(40, 50), (60, 30)]), folder, painter)
     names = ["pwv_20260914T0100Z.png", "pwv_20260914T0200Z.png"]
     assert [path.name for path in paths] == names
-    assert sorted(path.name for path in folder.iterdir()) == ["latest.png", *names]
-    assert (folder / "latest.png").read_bytes() == paths[-1].read_bytes()
+    assert sorted(path.name for path in folder.iterdir()) == names
     with Image.open(paths[0]) as picture:
         assert (picture.format, picture.mode) == ("PNG", "RGB")
         assert picture.size == painter.layout.size
 
 
-def test_write_maps_of_an_earlier_hour_keeps_latest(tmp_path, island, painter):
+def test_copy_newest_copies_the_newest_and_leaves_it_when_it_is_there(tmp_path, island, painter):
+    assert copy_newest(tmp_path) is None
     stations = make_stations(island, [(40, 50)])
     newest = write_maps(island, stations, tmp_path, painter)[-1]
-    write_maps(island.isel(time=[0]), stations, tmp_path, painter)
+    assert copy_newest(tmp_path) == tmp_path / "latest.png"
     assert (tmp_path / "latest.png").read_bytes() == newest.read_bytes()
+    write_maps(island.isel(time=[0]), stations, tmp_path, painter)
+    assert copy_newest(tmp_path) is None
+
+
+def test_write_latest_is_the_map_of_the_last_hour_alone(tmp_path, island, painter):
+    stations = make_stations(island, [(40, 50)])
+    maps = write_maps(island, stations, tmp_path / "all", painter)
+    latest = write_latest(island, stations, tmp_path / "latest", painter)
+    assert [path.name for path in (tmp_path / "latest").iterdir()] == ["latest.png"]
+    assert latest.read_bytes() == maps[-1].read_bytes()
 
 
 def test_write_maps_does_not_depend_on_the_hours_before(tmp_path, island, painter):
