@@ -55,10 +55,11 @@ def read_delays(path, name: str | None = None) -> DelayRecords:
     return find_format(path, name, DELAY_FORMATS).read(path, name=name)
 
 
-def read_weather(path, name: str | None = None) -> WeatherRecords:
+def read_weather(path, name: str | None = None, pressure_unit: str = "hPa") -> WeatherRecords:
     """Weather of a file in any of WEATHER_FORMATS; InputError if it is in none of them."""
     name = name or str(path)
-    return find_format(path, name, WEATHER_FORMATS).read(path, name=name)
+    read = find_format(path, name, WEATHER_FORMATS).read
+    return read(path, name=name, pressure_unit=pressure_unit)
 
 
 def find_format(path, name: str, formats: dict[str, Format]) -> Format:

@@ -246,6 +246,7 @@ class _Reading:
             columns,
             self.rejections,
             sites=sites,
+            stays=self.site_blocks.stays,
             created=self.created,
             warnings=self.warnings + self.site_blocks.warnings,
         )
