@@ -6,6 +6,7 @@ from collections.abc import Callable
 from typing import NamedTuple
 
 from fieldgen.errors import InputError
+from fieldgen.readers.cost716 import is_cost716, read_cost716
 from fieldgen.readers.records import DelayRecords, WeatherRecords
 from fieldgen.readers.rinex_met import is_rinex_met, read_rinex_met
 from fieldgen.readers.sinex_tro import is_sinex_tro, read_sinex_tro
@@ -36,6 +37,7 @@ def _table_format(kind: TableKind, read: Callable) -> Format:
 
 DELAY_FORMATS = {
     "SINEX_TRO": Format("2.00, 1.00 or 0.01, begins with %=TRO", is_sinex_tro, read_sinex_tro),
+    "COST-716": Format("V1.0 to V2.2a, begins with a line of dashes", is_cost716, read_cost716),
     "CSV": _table_format(DELAY_TABLE, read_delay_table),
 }
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import csv
 from collections.abc import Iterator
 from dataclasses import dataclass, field
-from itertools import pairwise
+from functools import partial
 from typing import NamedTuple
 
 import numpy as np
@@ -23,15 +23,13 @@ from fieldgen.readers.assembly import (
 )
 from fieldgen.readers.epochs import iso_epoch
 from fieldgen.readers.positions import check_position, distance_km
-from fieldgen.readers.records import DelayRecords, LineError, Rejections, Site, Stay, WeatherRecords
+from fieldgen.readers.records import DelayRecords, LineError, Rejections, Site, WeatherRecords
+from fieldgen.readers.stated_places import StatedPlaces
 from fieldgen.readers.text import first_content_line, read_lines
 
 DELIMITERS = ",;\t"
 MISSING_WORDS = ("", "nan", "na", "null", "none", "-")
 LONGEST_IDENTIFIER = 40
-SAME_PLACE_KM = 1.0
-MOST_PLACES = 100
-"""Places of one station in one file; a ship is no station."""
 
 
 class TableKind(NamedTuple):
@@ -299,90 +297,23 @@ def exchanged_positions(stations: list[StationRow]) -> list[StationRow]:
     ]
 
 
-@dataclass
-class _Stated:
-    """A place as the cells of a table give it, one index for each identifier and place."""
-
-    index: int
-    stay: Stay
-
-
-@dataclass
-class _Places:
-    """Stations or sites of a file, and when it says that they were where."""
-
-    stated: dict[str, dict[tuple, _Stated]] = field(default_factory=dict)
-    count: int = 0
-
-    def number(self, identifier: str, row: dict[str, str], time: int) -> int:
-        """Index of an identifier at a place, which is parsed where it is a new one."""
-        cells = tuple(row.get(column, "") for column in PLACE)
-        mine = self.stated.get(identifier, {})
-        stated = mine.get(cells)
-        if stated is None:
-            if len(mine) == MOST_PLACES:
-                raise LineError("too many places", f"{identifier} has more than {MOST_PLACES}")
-            site = Site(*parse_place(identifier, row))
-            stated = _Stated(self.count, Stay(site, time, time))
-            self.stated.setdefault(identifier, mine)[cells] = stated
-            self.count += 1
-        first, last = stated.stay.first, stated.stay.last
-        if time < first or time > last:
-            stated.stay = Stay(stated.stay.site, min(first, time), max(last, time))
-        return stated.index
-
-    def tell(self, columns: Columns, table: Table) -> tuple[list[str], Columns, dict]:
-        """Identifiers, records that refer to them, and what the file says of their places.
-
-        Places at the same time cannot be a move: records further than SAME_PLACE_KM from the first
-        are rejected.
-        """
-        number, strays = np.empty(self.count, int), np.zeros(self.count, bool)
-        sites, moves = {}, {}
-        for index, (identifier, mine) in enumerate(self.stated.items()):
-            for stated in mine.values():
-                number[stated.index] = index
-            placed = [stated for stated in mine.values() if _is_placed(stated.stay.site)]
-            in_turn = sorted((stated.stay for stated in placed), key=lambda stay: stay.first)
-            if placed:
-                sites[identifier] = placed[0].stay.site
-            if any(a.last >= b.first for a, b in pairwise(in_turn)):
-                far = [one.index for one in placed if _is_far(one.stay.site, sites[identifier])]
-                strays[far] = True
-            elif len(placed) > 1:
-                moves[identifier] = in_turn
-        bad = strays[columns.place]
-        ids, places = list(self.stated), number[columns.place]
-        table.rejections.add_each(
-            table.file,
-            columns.line[bad],
-            "several places at the same time",
-            lambda index: f"{ids[places[bad][index]]}; its first place is used",
-        )
-        columns.place = places
-        return ids, columns.keep(~bad), {"sites": sites, "stays": moves}
-
-
-def _is_placed(site: Site) -> bool:
-    return not np.isnan([site.longitude, site.ellipsoidal_height, site.msl_height]).all()
-
-
-def _is_far(site: Site, first: Site) -> bool:
-    apart = distance_km(site.longitude, site.latitude, first.longitude, first.latitude)
-    return apart > SAME_PLACE_KM
-
-
 def _read_records(
     path, table: Table, id_column: str, value_names: tuple[str, ...]
 ) -> tuple[list[str], Columns, dict]:
     """Identifiers, records that refer to them, and what the file says of their places."""
-    places, rows = _Places(), Rows(value_names)
+    places, rows = StatedPlaces(), Rows(value_names)
     for number, row in table.rows(path):
         try:
             identifier = parse_identifier(row[id_column])
             time = parse_time(row["time"])
             values = [parse_number(row, name) for name in value_names]
-            rows.add(number, places.number(identifier, row, time), time, *values)
+            cells = tuple(row.get(column, "") for column in PLACE)
+            place = places.number(identifier, cells, time, partial(_site, identifier, row))
+            rows.add(number, place, time, *values)
         except LineError as error:
             table.reject(number, error)
-    return places.tell(rows.columns(), table)
+    return places.tell(rows.columns(), table.file, table.rejections)
+
+
+def _site(identifier: str, row: dict[str, str]) -> Site:
+    return Site(*parse_place(identifier, row))
