@@ -1,7 +1,7 @@
-"""Text files, plain or gzip, as blocks of whole lines or as lines; memory stays bounded.
+"""Text files as blocks of whole lines or as lines, memory staying bounded.
 
-Gzip is known by its first bytes, whatever the file is called. Text is UTF-8, or Latin-1 where it is
-not valid UTF-8. Lines end in LF or CRLF.
+Plain, gzip or compress (.Z), known by the first bytes, whatever the file is called. Text is UTF-8,
+or Latin-1 where it is not valid UTF-8. Lines end in LF or CRLF.
 """
 
 from __future__ import annotations
@@ -10,6 +10,7 @@ import gzip
 import zlib
 from collections.abc import Iterator
 from contextlib import contextmanager
+from io import BufferedReader
 from pathlib import Path
 from typing import IO, NamedTuple
 
@@ -23,9 +24,9 @@ CHUNK_BYTES = 1 << 22
 """Size of a block [bytes]: about 50 000 lines."""
 
 GZIP_MAGIC = b"\x1f\x8b"
+COMPRESS_MAGIC = b"\x1f\x9d"
 UTF8_MARK = b"\xef\xbb\xbf"
 OTHER_COMPRESSION = {
-    b"\x1f\x9d": "compress (.Z)",
     b"BZh": "bzip2",
     b"PK\x03\x04": "zip",
     b"\xfd7zXZ": "xz",
@@ -44,7 +45,9 @@ class Chunk(NamedTuple):
 
 @contextmanager
 def open_bytes(path, name: str) -> Iterator[IO[bytes]]:
-    """An open binary file, decompressed on the way if it is gzip.
+    """An open binary file, decompressed on the way if it is gzip or compress.
+
+    Data of compress have no checksum: that they are whole, only their text can tell.
 
     Raises InputError, which begins with `name`, where the file cannot be opened or read to its end.
     """
@@ -55,6 +58,9 @@ def open_bytes(path, name: str) -> Iterator[IO[bytes]]:
             _check_compression(start, name)
             if start.startswith(GZIP_MAGIC):
                 with gzip.open(raw) as unpacked:
+                    yield unpacked
+            elif start.startswith(COMPRESS_MAGIC):
+                with _open_compress(raw, name) as unpacked:
                     yield unpacked
             else:
                 yield raw
@@ -70,12 +76,27 @@ def open_bytes(path, name: str) -> Iterator[IO[bytes]]:
         raise InputError(f"{name}: cannot be read ({error.strerror or error}).") from error
 
 
+@contextmanager
+def _open_compress(raw: IO[bytes], name: str) -> Iterator[IO[bytes]]:
+    """What a file of the Unix tool compress holds."""
+    from uncompresspy import LZWFile
+
+    try:
+        with LZWFile(raw, warn_truncation=False, save_checkpoints=False) as unpacked:
+            yield BufferedReader(unpacked)
+    except (ValueError, IndexError) as error:
+        raise InputError(
+            f"{name}: compress (.Z) data are damaged ({error}). Fetch the file again."
+        ) from error
+
+
 def _check_compression(start: bytes, name: str) -> None:
     """Refuse what is compressed in a way that is not read here."""
     for magic, kind in OTHER_COMPRESSION.items():
         if start.startswith(magic):
             raise InputError(
-                f"{name}: compression is {kind}, expected plain text or gzip. Unpack it first."
+                f"{name}: compression is {kind}, expected plain text, gzip or compress (.Z)."
+                " Unpack it first."
             )
 
 
@@ -127,5 +148,5 @@ def first_content_line(path, name: str) -> str:
 
 
 def file_stem(path) -> str:
-    """Name of a file without folder, `.gz` and its last suffix."""
-    return Path(Path(path).name.removesuffix(".gz")).stem
+    """Name of a file without folder, `.gz` or `.Z`, and its last suffix."""
+    return Path(Path(path).name.removesuffix(".gz").removesuffix(".Z")).stem
