@@ -20,6 +20,9 @@ from fieldgen.readers.records import Rejections
 LONGEST_LINE = 10_000
 """Longest line [bytes] that is read; no format here comes near it."""
 
+BEGINNING_BYTES = 300
+"""Bytes by which a binary file is known."""
+
 CHUNK_BYTES = 1 << 22
 """Size of a block [bytes]: about 50 000 lines."""
 
@@ -137,6 +140,12 @@ def read_lines(path, name: str, rejections: Rejections) -> Iterator[tuple[int, s
 def reject_long_line(rejections: Rejections, name: str, line: int) -> None:
     """Count a line that is too long to belong to any format read here."""
     rejections.add(name, line, "line too long", f"more than {LONGEST_LINE} bytes")
+
+
+def first_bytes(path, name: str) -> bytes:
+    """The first BEGINNING_BYTES of a file, or all of it, decompressed."""
+    with open_bytes(path, name) as stream:
+        return stream.read(BEGINNING_BYTES)
 
 
 def first_content_line(path, name: str) -> str:
