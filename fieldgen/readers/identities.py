@@ -97,22 +97,30 @@ def tell_apart(
 
 
 def _stays_of(records: Records) -> dict[str, list[Stay]]:
-    """Where each station of a file has been, and from which to which record."""
-    seconds = records.time.astype(np.int64)
-    first = np.full(len(records.identifiers), np.inf)
-    last = -first
-    np.minimum.at(first, records.place, seconds)
-    np.maximum.at(last, records.place, seconds)
-    stays = {}
-    for index, code in enumerate(records.identifiers):
-        if last[index] >= first[index]:
-            span = Stay(records.sites.get(code, Site()), first[index], last[index])
+    """Where each station of a file has been, and from which to which record; [] if it is silent."""
+    stays: dict[str, list[Stay]] = {code: [] for code in records.identifiers}
+    if not any(_is_placed(site) for site in records.sites.values()):
+        return stays
+    for index, (first, last) in _spans(records).items():
+        code = records.identifiers[index]
+        site = records.sites.get(code)
+        if site is not None and _is_placed(site):
             stays[code] = [
-                stay._replace(first=max(stay.first, span.first), last=min(stay.last, span.last))
+                stay._replace(first=max(stay.first, first), last=min(stay.last, last))
                 for stay in records.stays.get(code, [])
-                if stay.first <= span.last and stay.last >= span.first
-            ] or [span]
+                if stay.first <= last and stay.last >= first
+            ] or [Stay(site, first, last)]
     return stays
+
+
+def _spans(records: Records) -> dict[int, tuple[int, int]]:
+    """First and last epoch [s] of each station that has records, by its index."""
+    order = np.argsort(records.place, kind="stable")
+    place, seconds = records.place[order], records.time[order].astype(np.int64)
+    start = np.flatnonzero(np.diff(place, prepend=-1))
+    first, last = np.minimum.reduceat(seconds, start), np.maximum.reduceat(seconds, start)
+    spans = zip(first.tolist(), last.tolist(), strict=True)
+    return dict(zip(place[start].tolist(), spans, strict=True))
 
 
 @dataclass
@@ -126,7 +134,7 @@ class _Code:
 
     def resolve(self, said: list[Stay]) -> list[_Place]:
         """Its places, with distinct names, oldest first."""
-        places = _grouped([stay for stay in said if _is_placed(stay.site)])
+        places = _grouped(said)
         if len(places) < 2:
             site = places[0].site if places else Site()
             return [_Place(site, -np.inf, np.inf, 0, self.code)]
@@ -212,10 +220,10 @@ def _is_move(before: _Place, after: _Place) -> bool:
 
 def _numbers(records: Records, stays, places, index, report: ReadingReport) -> np.ndarray:
     """Each record's index (n,) among the identifiers, -1 where it could belong to several."""
-    first = [index[places[code][0].name] if code in stays else -1 for code in records.identifiers]
+    first = [index[places[code][0].name] for code in records.identifiers]
     number = np.array(first, np.int32)[records.place]
     for place, code in enumerate(records.identifiers):
-        if len(places[code]) > 1 and code in stays:
+        if len(places[code]) > 1:
             mine = np.flatnonzero(records.place == place)
             seconds = records.time[mine].astype(np.int64)
             number[mine] = _number_by_time(seconds, stays[code], places[code], index)
@@ -228,7 +236,7 @@ def _numbers(records: Records, stays, places, index, report: ReadingReport) -> n
 
 def _number_by_time(seconds, stays: list[Stay], places: list[_Place], index) -> np.ndarray:
     """Index (n,) of the station at each time: as the file's own places say, or by the others."""
-    if _is_placed(stays[0].site):
+    if stays:
         where = [_place_of(stay.site, places) for stay in stays]
         begin = [stay.first for stay in stays]
     elif all(_is_move(*pair) for pair in pairwise(places)):
@@ -257,7 +265,7 @@ def _numbers_of(site: Site) -> tuple[float, float, float, float]:
 
 def _is_placed(site: Site) -> bool:
     """Whether a file says anything of a place."""
-    return not all(np.isnan(value) for value in _numbers_of(site))
+    return any(value == value for value in _numbers_of(site))  # NaN is not equal to itself
 
 
 def _filled(site: Site, older: Site) -> Site:

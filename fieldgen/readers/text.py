@@ -20,6 +20,9 @@ from fieldgen.readers.records import Rejections
 LONGEST_LINE = 10_000
 """Longest line [bytes] that is read; no format here comes near it."""
 
+FEW_BYTES = 1 << 14
+"""Size of a block [bytes] where only the first line is wanted."""
+
 BEGINNING_BYTES = 300
 """Bytes by which a binary file is known."""
 
@@ -126,9 +129,11 @@ def decode(data: bytes) -> str:
         return data.decode("latin-1")
 
 
-def read_lines(path, name: str, rejections: Rejections) -> Iterator[tuple[int, str]]:
+def read_lines(
+    path, name: str, rejections: Rejections, size: int = CHUNK_BYTES
+) -> Iterator[tuple[int, str]]:
     """Line number (from 1) and text without its line ending; lines too long are rejected."""
-    for chunk in read_chunks(path, name):
+    for chunk in read_chunks(path, name, size):
         lines = chunk.data.removesuffix(b"\n").split(b"\n")
         for number, line in enumerate(lines, chunk.first_line):
             if len(line) > LONGEST_LINE:
@@ -150,7 +155,7 @@ def first_bytes(path, name: str) -> bytes:
 
 def first_content_line(path, name: str) -> str:
     """The first line that is neither empty nor a `#` comment, '' if there is none."""
-    for _, line in read_lines(path, name, Rejections()):
+    for _, line in read_lines(path, name, Rejections(), FEW_BYTES):
         if line.strip() and not line.lstrip().startswith("#"):
             return line
     return ""
