@@ -73,11 +73,17 @@ def tell_apart(
     """
     stays = [_stays_of(records) for records in tables]
     said: dict[str, list[Stay]] = {}
-    for table in stays:
+    silent: dict[str, Site] = {}
+    for records, table in zip(tables, stays, strict=True):
         for code, some in table.items():
             said.setdefault(code, []).extend(some)
+            if not some and code in records.sites:
+                silent[code] = records.sites[code]
     places = {
-        code: _Code(code, kind, rows.get(code), report).resolve(said[code]) for code in sorted(said)
+        code: _Code(code, kind, rows.get(code), report).resolve(
+            said[code], silent.get(code, Site())
+        )
+        for code in sorted(said)
     }
     names = sorted({place.name for some in places.values() for place in some})
     result = Identities()
@@ -132,11 +138,11 @@ class _Code:
     row: StationRow | None
     report: ReadingReport
 
-    def resolve(self, said: list[Stay]) -> list[_Place]:
-        """Its places, with distinct names, oldest first."""
+    def resolve(self, said: list[Stay], silent: Site) -> list[_Place]:
+        """Its places, with distinct names, oldest first; `silent` if no record is at any."""
         places = _grouped(said)
         if len(places) < 2:
-            site = places[0].site if places else Site()
+            site = places[0].site if places else silent
             return [_Place(site, -np.inf, np.inf, 0, self.code)]
         if all(_is_move(*pair) for pair in pairwise(places)):
             return self._moved(places)

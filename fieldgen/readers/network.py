@@ -23,6 +23,10 @@ from fieldgen.readers.tables import StationRow, read_station_table
 from fieldgen.readers.time_grid import TimeGrid, spikes, step_means
 from fieldgen.settings import Settings, read_settings
 
+ODD_PRESSURE = 60.0
+"""A median pressure this far [hPa] from the standard atmosphere's is reported: no weather does it
+for long, 500 m of height do."""
+
 SPIKE_WINDOW = np.timedelta64(3600, "s")
 """Records are held against the median of their hour, however long a step is."""
 
@@ -71,13 +75,15 @@ def read_network(path: str | Path, progress: Callable[[str], None] = lambda file
             "stations.weather."
         )
     time = _time_grid(settings, delays)
+    gridded_weather = _grid_weather(weather, sites, time, report)
+    _report_odd_pressures(gridded_weather, report)
     return Network(
         settings=settings,
         grid=grid,
         terrain=terrain,
         stations=stations,
         delays=_grid_delays(settings, delays, stations, time, report),
-        weather=_grid_weather(weather, sites, time, report),
+        weather=gridded_weather,
         report=report,
     )
 
@@ -245,3 +251,21 @@ def _grid_weather(
     _report_doubled("weather records", doubled, report)
     variables = {name: (("time", "site"), values) for name, values in gridded.items()}
     return sites.assign(variables).assign_coords(time=time.stamps.astype("datetime64[ns]"))
+
+
+def _report_odd_pressures(weather: xr.Dataset, report: ReadingReport) -> None:
+    """Report barometers whose pressure cannot be that of their height.
+
+    The standard atmosphere is that of ICAO Doc 7488, below 11 km.
+    """
+    for site in weather.site.values:
+        one = weather.sel(site=site)
+        measured, height = one.pressure.values, float(one.orthometric_height)
+        measured = measured[np.isfinite(measured)]
+        expected = 1013.25 * (1.0 - 2.25577e-5 * height) ** 5.25588
+        if len(measured) and abs(np.median(measured) - expected) > ODD_PRESSURE:
+            report.warnings.append(
+                f"barometer {site}: its pressure is {np.median(measured):.0f} hPa, expected about "
+                f"{expected:.0f} hPa at its height of {height:.0f} m. Check the height, and whether"
+                " the pressure is reduced to sea level."
+            )

@@ -182,3 +182,48 @@ def test_reading_is_the_same_whatever_order_the_files_are_listed_in(tmp_path, mo
     again = read_network(path)
     np.testing.assert_array_equal(once.delays.pwv, again.delays.pwv)
     assert once.report == again.report
+
+
+def test_a_geoid_of_the_wrong_sign_is_not_used(tmp_path):
+    """Negative control: height above sea level written as ellipsoidal + undulation, 114 m off."""
+    path = scene(tmp_path)
+    head, *rows = lines(tmp_path)
+    height = station_places(12)[2][5]
+    above_ellipsoid = f"{height + 57.0:.2f}"
+    written, wrong = f",{height:.2f},{above_ellipsoid}", f",{height + 114.0:.2f},{above_ellipsoid}"
+    put(tmp_path, "delays.csv", head, *(row.replace(written, wrong) for row in rows))
+    network = read_network(path)
+    assert float(network.stations.orthometric_height.sel(station="ST05")) == pytest.approx(
+        height, abs=0.01
+    )
+    assert any("ST05: its listed height above sea level is" in w for w in network.report.warnings)
+
+
+def test_a_pressure_reduced_to_sea_level_is_reported(tmp_path):
+    """Published number: 898.7 hPa at 1000 m in the ICAO standard atmosphere (Doc 7488)."""
+    path = scene(tmp_path)
+    rows = lines(tmp_path, "weather.csv")
+    put(tmp_path, "weather.csv", *(row.replace(",10.0", ",1000.0") for row in rows))
+    assert (
+        "barometer WX01: its pressure is 1005 hPa, expected about 899 hPa at its height of 1000 m. "
+        "Check the height, and whether the pressure is reduced to sea level."
+    ) in read_network(path).report.warnings
+
+
+def test_an_ordinary_pressure_is_not_reported(tmp_path):
+    warnings = read_network(scene(tmp_path)).report.warnings
+    assert not any("its pressure is" in text for text in warnings)
+
+
+def test_a_station_that_lost_all_its_lines_stays_in_the_network(tmp_path):
+    """Its rejected lines are counted, and it is there without values."""
+    path = scene(tmp_path)
+    head, *rows = lines(tmp_path)
+    rows = [
+        row.replace(row.split(",")[2], "999") if row.startswith("ST05") else row for row in rows
+    ]
+    put(tmp_path, "delays.csv", head, *rows)
+    network = read_network(path)
+    assert network.report.rejections.counts["delays.csv", "pwv out of range"] == 6
+    assert "ST05" in network.stations.station.values
+    assert np.isnan(network.delays.pwv.sel(station="ST05")).all()
