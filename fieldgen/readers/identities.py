@@ -79,12 +79,10 @@ def tell_apart(
             said.setdefault(code, []).extend(some)
             if not some and code in records.sites:
                 silent[code] = records.sites[code]
-    places = {
-        code: _Code(code, kind, rows.get(code), report).resolve(
-            said[code], silent.get(code, Site())
-        )
-        for code in sorted(said)
-    }
+    places = {}
+    for code in sorted(said):
+        one = _Code(code, kind, rows.get(code), report)
+        places[code] = one.resolve(said[code], silent.get(code, Site()))
     names = sorted({place.name for some in places.values() for place in some})
     result = Identities()
     for code, some in places.items():

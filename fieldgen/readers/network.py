@@ -197,7 +197,7 @@ def _read_table(settings: Settings, report: ReadingReport) -> dict[str, StationR
 
 def _time_grid(settings: Settings, delays: Pool) -> TimeGrid:
     step = np.timedelta64(int(settings.network.time_step.total_seconds()), "s")
-    return TimeGrid.around(delays.time, step)
+    return TimeGrid.around(np.unique(delays.time), step)
 
 
 def _grid_delays(

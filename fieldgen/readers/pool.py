@@ -9,8 +9,8 @@ import numpy as np
 from fieldgen.readers.identities import Identities
 from fieldgen.readers.records import Records, Rejections
 
-FARTHEST_EPOCH = 20 * 366 * 86_400
-"""Records this far [s] from the median epoch are wrong; a time grid up to them would be huge."""
+FARTHEST_EPOCH = 20 * 366
+"""Records this many days from the median day are wrong; a time grid up to them would be huge."""
 
 FAR_EPOCH = "epoch far from all others"
 
@@ -28,12 +28,12 @@ def oldest_first(tables: list[Records]) -> list[Records]:
 
 def drop_far_epochs(tables: list[Records], rejections: Rejections) -> None:
     """Take out, and count by file, records further than 20 years from the median epoch of all."""
-    seconds = [records.time.astype(np.int64) for records in tables]
-    if not seconds:
+    if not tables:
         return
-    middle = np.median(np.concatenate(seconds))
-    for records, time in zip(tables, seconds, strict=True):
-        far = np.abs(time - middle) > FARTHEST_EPOCH
+    days = [records.time.astype("M8[D]").astype(np.int32) for records in tables]
+    middle = np.median(np.concatenate(days))
+    for records, day in zip(tables, days, strict=True):
+        far = np.abs(day - middle) > FARTHEST_EPOCH
         if far.any():
             rejections.counts[records.file, FAR_EPOCH] += int(far.sum())
             records.keep(~far)
