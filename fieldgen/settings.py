@@ -126,6 +126,7 @@ class StationsTable(_Table):
     delays: list[str] = Field(min_length=1)
     weather: list[str] = []
     table: Path | None = None
+    pressure_unit: Literal["hPa", "0.1 hPa", "Pa"] = "hPa"
 
 
 class TerrainTable(_Table):

@@ -14,6 +14,9 @@ from fieldgen.readers.records import DelayRecords, Rejections, WeatherRecords
 DELAY_VALUES = ("ztd", "ztd_sigma", "pwv", "pwv_sigma")
 WEATHER_VALUES = ("pressure", "temperature", "relative_humidity")
 
+PRESSURE_UNITS = {"hPa": 1.0, "0.1 hPa": 0.1, "Pa": 0.01}
+"""hPa per unit that weather files may be in."""
+
 ROWS_HELD = 20_000
 """Records held as Python numbers before they are packed."""
 
@@ -125,6 +128,11 @@ def weather_records(
     )
 
 
+def convert_pressure(columns: Columns, unit: str) -> None:
+    """Bring pressures in `unit`, one of PRESSURE_UNITS, to hPa."""
+    columns.values["pressure"] = columns.values["pressure"] * PRESSURE_UNITS[unit]
+
+
 def check_sigma(values, name: str):
     """Standard errors, NaN where they are not above zero or infinite; other columns as they are."""
     if not name.endswith("_sigma"):
@@ -136,7 +144,16 @@ def describe_outside(name: str, value: float) -> str:
     """`pressure is 10132 hPa, expected 400 to 1100 hPa`."""
     limits = QUANTITIES[name]
     unit = limits.unit
-    return f"{name} is {value:.7g} {unit}, expected {limits.low:g} to {limits.high:g} {unit}"
+    text = f"{name} is {value:.7g} {unit}, expected {limits.low:g} to {limits.high:g} {unit}"
+    return text + _hint_at_unit(value) if name == "pressure" else text
+
+
+def _hint_at_unit(pressure: float) -> str:
+    """What to do about a pressure [hPa] that would be right in another unit."""
+    for unit, factor in PRESSURE_UNITS.items():
+        if not is_outside("pressure", pressure * factor):
+            return f'. If the file is in {unit}, set stations.pressure_unit = "{unit}"'
+    return ""
 
 
 def is_outside(name: str, values):

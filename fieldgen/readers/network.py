@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import glob
-from collections.abc import Callable, Iterable
+from collections.abc import Callable
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 
 import numpy as np
@@ -14,11 +15,17 @@ from fieldgen.errors import InputError
 from fieldgen.ground.grid import Grid, read_grid
 from fieldgen.ground.terrain import Terrain, read_terrain
 from fieldgen.readers.formats import read_delays, read_weather
-from fieldgen.readers.places import locate_sites, locate_stations, report_climbs
-from fieldgen.readers.records import DelayRecords, ReadingReport, WeatherRecords
+from fieldgen.readers.identities import Identities, tell_apart
+from fieldgen.readers.places import locate_sites, locate_stations, report_climbs, rows_of_codes
+from fieldgen.readers.pool import Pool, drop_far_epochs, oldest_first
+from fieldgen.readers.records import DelayRecords, ReadingReport, Records, WeatherRecords
 from fieldgen.readers.tables import StationRow, read_station_table
 from fieldgen.readers.time_grid import TimeGrid, spikes, step_means
 from fieldgen.settings import Settings, read_settings
+
+ODD_PRESSURE = 60.0
+"""A median pressure this far [hPa] from the standard atmosphere's is reported: no weather does it
+for long, 500 m of height do."""
 
 SPIKE_WINDOW = np.timedelta64(3600, "s")
 """Records are held against the median of their hour, however long a step is."""
@@ -56,11 +63,11 @@ def read_network(path: str | Path, progress: Callable[[str], None] = lambda file
     terrain = read_terrain(settings.path(land.file), grid, land.lowest_land)
     report = ReadingReport()
     _check_lines(settings)
-    delays = list(_read_files(settings, "delays", read_delays, report, progress))
-    weather = list(_read_files(settings, "weather", read_weather, report, progress))
     table = _read_table(settings, report)
-    stations = locate_stations(settings, grid, delays, table, report)
-    sites = locate_sites(settings, weather, stations, report)
+    delays, named = _read_delays(settings, table, report, progress)
+    weather, sites_named = _read_weather(settings, table, report, progress)
+    stations = locate_stations(settings, grid, named, report)
+    sites = locate_sites(settings, sites_named, stations, report)
     report_climbs(settings, stations, sites, report)
     if not sites.sizes["site"]:
         report.warnings.append(
@@ -68,13 +75,15 @@ def read_network(path: str | Path, progress: Callable[[str], None] = lambda file
             "stations.weather."
         )
     time = _time_grid(settings, delays)
+    gridded_weather = _grid_weather(weather, sites, time, report)
+    _report_odd_pressures(gridded_weather, report)
     return Network(
         settings=settings,
         grid=grid,
         terrain=terrain,
         stations=stations,
         delays=_grid_delays(settings, delays, stations, time, report),
-        weather=_grid_weather(weather, sites, time),
+        weather=gridded_weather,
         report=report,
     )
 
@@ -93,27 +102,60 @@ def _read_grid(settings: Settings) -> Grid:
     return Grid.between(table.crs, table.west, table.south, table.east, table.north, table.spacing)
 
 
-def find_files(settings: Settings, kind: str) -> list[Path]:
+def _read_delays(
+    settings: Settings, table: dict[str, StationRow], report: ReadingReport, progress
+) -> tuple[Pool, Identities]:
+    """All delays, by station, and the stations told apart."""
+    tables = _read_files(settings, "delays", read_delays, report, progress)
+    drop_far_epochs(tables, report.rejections)
+    named = tell_apart(tables, rows_of_codes(tables, table), report)
+    return Pool.of(tables, named, DelayRecords.values), named
+
+
+def _read_weather(
+    settings: Settings, table: dict[str, StationRow], report: ReadingReport, progress
+) -> tuple[Pool, Identities]:
+    """All surface weather, by site, and the sites told apart."""
+    read = partial(read_weather, pressure_unit=settings.stations.pressure_unit)
+    tables = _read_files(settings, "weather", read, report, progress)
+    listed = {name: row for name, row in table.items() if np.isfinite(row.barometer_height)}
+    named = tell_apart(tables, rows_of_codes(tables, listed), report, "barometer")
+    return Pool.of(tables, named, WeatherRecords.values), named
+
+
+def find_files(settings: Settings, kind: str, report: ReadingReport) -> list[Path]:
     """Files that the patterns of ``stations.<kind>`` name, sorted, each once.
 
-    Raises InputError for a pattern that names no file.
+    A pattern that names no file is reported as a warning, so that a run goes on with the others;
+    InputError if none of the patterns names any.
     """
-    found = set()
-    for pattern in getattr(settings.stations, kind):
-        files = glob.glob(pattern, root_dir=settings.folder, recursive=True)
-        if not files:
-            raise InputError(f"stations.{kind}: {pattern!r} names no file below {settings.folder}.")
-        found.update(files)
-    return [settings.path(name) for name in sorted(found)]
+    patterns = getattr(settings.stations, kind)
+    found = {
+        pattern: glob.glob(pattern, root_dir=settings.folder, recursive=True)
+        for pattern in patterns
+    }
+    files = sorted({file for some in found.values() for file in some})
+    empty = [
+        f"stations.{kind}: {pattern!r} names no file below {settings.folder}"
+        for pattern, some in found.items()
+        if not some
+    ]
+    if empty and not files:
+        raise InputError(f"{empty[0]}.")
+    report.warnings.extend(empty)
+    return [settings.path(name) for name in files]
 
 
-def _read_files(settings: Settings, kind: str, read, report: ReadingReport, progress) -> Iterable:
-    """Records of all files of a kind; a file without anything usable is reported and passed over.
+def _read_files(
+    settings: Settings, kind: str, read, report: ReadingReport, progress
+) -> list[Records]:
+    """Records of all files of a kind, oldest file first; a file without anything usable, or one
+    that is gone by now, is reported and passed over.
 
     Raises InputError if no file at all could be used.
     """
-    files = find_files(settings, kind)
-    used = 0
+    files = find_files(settings, kind, report)
+    tables = []
     for path in files:
         name = _display_name(settings, path)
         progress(name)
@@ -122,17 +164,17 @@ def _read_files(settings: Settings, kind: str, read, report: ReadingReport, prog
         except InputError as error:
             report.unusable_files[name] = str(error)
             continue
-        used += 1
         report.files[name] = len(records.time)
         report.rejections.merge(records.rejections)
         report.warnings.extend(f"{name}: {warning}" for warning in records.warnings)
         records.compact()
-        yield records
-    if files and not used:
+        tables.append(records)
+    if files and not tables:
         raise InputError(
             f"stations.{kind}: none of the {len(files)} files can be used. The first: "
             f"{next(iter(report.unusable_files.values()))}"
         )
+    return oldest_first(tables)
 
 
 def _display_name(settings: Settings, path: Path) -> str:
@@ -152,24 +194,22 @@ def _read_table(settings: Settings, report: ReadingReport) -> dict[str, StationR
     return rows
 
 
-def _time_grid(settings: Settings, delays: list[DelayRecords]) -> TimeGrid:
+def _time_grid(settings: Settings, delays: Pool) -> TimeGrid:
     step = np.timedelta64(int(settings.network.time_step.total_seconds()), "s")
-    return TimeGrid.around(np.concatenate([np.unique(records.time) for records in delays]), step)
+    return TimeGrid.around(np.unique(delays.time), step)
 
 
 def _grid_delays(
-    settings: Settings, delays, stations: xr.Dataset, time: TimeGrid, report: ReadingReport
+    settings: Settings, delays: Pool, stations: xr.Dataset, time: TimeGrid, report: ReadingReport
 ) -> xr.Dataset:
-    """Step means of all delays; the records are let go station by station."""
+    """Step means of all delays, without those that stand off the others of their hour."""
     ids = list(stations.station.values)
     names = DelayRecords.values
     gridded = {name: np.full((len(time.stamps), len(ids)), np.nan) for name in names}
     doubled = early = 0
     for column, station in enumerate(ids):
-        epoch, values = _series(delays, station)
-        keep = _last_of_each(epoch)
-        doubled += len(epoch) - len(keep)
-        epoch, values = epoch[keep], {name: values[name][keep] for name in names}
+        epoch, values, gave_way = delays.series(station)
+        doubled += gave_way
         early += int((epoch <= time.start).sum())
         spike = spikes(epoch, values["ztd"], SPIKE_WINDOW, settings.screening.spike)
         if spike.any():
@@ -179,10 +219,7 @@ def _grid_delays(
         for name in names:
             used = values[name] if name.startswith("pwv") else np.where(spike, np.nan, values[name])
             gridded[name][:, column] = step_means(epoch, used, time)
-    if doubled:
-        report.warnings.append(
-            f"{doubled} delays stand in more than one file; the file read last is used"
-        )
+    _report_doubled("delays", doubled, report)
     if early:
         report.rejections.counts["delays", "on the edge before the first whole step"] += early
     return xr.Dataset(
@@ -191,29 +228,43 @@ def _grid_delays(
     )
 
 
-def _series(tables, identifier: str):
-    """Epochs (n,) and values by name (n,) of one station or site from all tables that hold it."""
-    parts = [table.series(identifier) for table in tables if identifier in table.identifiers]
-    epoch = np.concatenate([times for times, _ in parts])
-    names = parts[0][1]
-    return epoch, {name: np.concatenate([values[name] for _, values in parts]) for name in names}
+def _report_doubled(what: str, count: int, report: ReadingReport) -> None:
+    if count:
+        report.warnings.append(
+            f"{count} {what} stand in more than one file; the file created last is used"
+        )
 
 
-def _last_of_each(epoch):
-    """Indices of the records to keep, of each epoch the one read last."""
-    order = np.argsort(epoch, kind="stable")
-    last = np.ones(len(order), bool)
-    last[:-1] = np.diff(epoch[order]).astype(int) > 0
-    return order[last]
-
-
-def _grid_weather(weather, sites: xr.Dataset, time: TimeGrid) -> xr.Dataset:
+def _grid_weather(
+    weather: Pool, sites: xr.Dataset, time: TimeGrid, report: ReadingReport
+) -> xr.Dataset:
     ids = list(sites.site.values)
     names = WeatherRecords.values
     gridded = {name: np.full((len(time.stamps), len(ids)), np.nan) for name in names}
+    doubled = 0
     for column, site in enumerate(ids):
-        epoch, values = _series(weather, site)
+        epoch, values, gave_way = weather.series(site)
+        doubled += gave_way
         for name in names:
             gridded[name][:, column] = step_means(epoch, values[name], time)
+    _report_doubled("weather records", doubled, report)
     variables = {name: (("time", "site"), values) for name, values in gridded.items()}
     return sites.assign(variables).assign_coords(time=time.stamps.astype("datetime64[ns]"))
+
+
+def _report_odd_pressures(weather: xr.Dataset, report: ReadingReport) -> None:
+    """Report barometers whose pressure cannot be that of their height.
+
+    The standard atmosphere is that of ICAO Doc 7488, below 11 km.
+    """
+    for site in weather.site.values:
+        one = weather.sel(site=site)
+        measured, height = one.pressure.values, float(one.orthometric_height)
+        measured = measured[np.isfinite(measured)]
+        expected = 1013.25 * (1.0 - 2.25577e-5 * height) ** 5.25588
+        if len(measured) and abs(np.median(measured) - expected) > ODD_PRESSURE:
+            report.warnings.append(
+                f"barometer {site}: its pressure is {np.median(measured):.0f} hPa, expected about "
+                f"{expected:.0f} hPa at its height of {height:.0f} m. Check the height, and whether"
+                " the pressure is reduced to sea level."
+            )

@@ -12,7 +12,8 @@ from fieldgen.ground.geoid import undulation
 from fieldgen.ground.grid import Grid
 from fieldgen.ground.terrain import read_raster_at
 from fieldgen.kriging.covariance import chord_positions, distances
-from fieldgen.readers.records import DelayRecords, ReadingReport, Site, WeatherRecords
+from fieldgen.readers.identities import Identities
+from fieldgen.readers.records import ReadingReport, Records, Site
 from fieldgen.readers.tables import StationRow
 from fieldgen.settings import Settings
 from fieldgen.station.surface_air import Sites, own_barometer
@@ -26,6 +27,9 @@ SAME_HEIGHT = 5.0
 SUSPICIOUS_CLIMB = 50.0
 """An antenna this much [m] above or below its own barometer is reported."""
 
+BAROMETER_HEIGHT = 10.0
+"""A barometer's height in its files this far [m] from the station table's is reported."""
+
 STATION_MARGIN = 2.0
 """Stations further outside the grid than this many times `kriging.far_distance` are left out."""
 
@@ -33,8 +37,7 @@ STATION_MARGIN = 2.0
 def locate_stations(
     settings: Settings,
     grid: Grid,
-    delays: list[DelayRecords],
-    table: dict[str, StationRow],
+    named: Identities,
     report: ReadingReport,
 ) -> xr.Dataset:
     """Stations that report delays and whose place is known, with all their heights.
@@ -43,17 +46,16 @@ def locate_stations(
     terrain_height [m], name. Raises InputError if no place or a height is not known, GridError if
     no station is near the grid.
     """
-    in_files = _sites(delays, "station_ids")
     rows = {
         station: row
-        for station, site in sorted(in_files.items())
-        if (row := _station_row(station, site, table, report)) is not None
+        for station, site in named.sites.items()
+        if (row := _station_row(station, site, named.rows.get(station), report)) is not None
     }
     _leave_out_doubtful(rows, report)
     if not rows:
         raise InputError("stations: no station has coordinates. Give stations.table.")
     column = _columns(rows)
-    by_table = np.array([station in table for station in rows])
+    by_table = np.array([station in named.rows for station in rows])
     ellipsoidal, orthometric = _heights(settings, list(rows), column, by_table, report)
     stations = xr.Dataset(
         {
@@ -70,19 +72,17 @@ def locate_stations(
     return _with_terrain(settings, near, report)
 
 
-def _sites(tables: list[DelayRecords] | list[WeatherRecords], ids: str) -> dict[str, Site]:
-    """Every identifier of the files with the place that the last of them gives."""
-    sites: dict[str, Site] = {}
-    for records in tables:
-        for name in getattr(records, ids):
-            sites.setdefault(name, Site())
-        sites |= {name: site for name, site in records.sites.items() if name in sites}
-    return sites
+def rows_of_codes(tables: list[Records], table: dict[str, StationRow]) -> dict[str, StationRow]:
+    """Row of the station table by code, of the codes of the files that are in it."""
+    codes = {code for records in tables for code in records.identifiers}
+    found = {code: table.get(code) or _row_of_short_name(code, table) for code in codes}
+    return {code: row for code, row in found.items() if row is not None}
 
 
-def _station_row(station: str, site: Site, table, report: ReadingReport) -> StationRow | None:
-    """Place of a station: from the table, else from the delay files."""
-    row = table.get(station) or _row_of_short_name(station, table)
+def _station_row(
+    station: str, site: Site, row: StationRow | None, report: ReadingReport
+) -> StationRow | None:
+    """Place of a station: from its row of the table, else from the delay files."""
     if row is not None:
         _compare_places(station, row, site, report)
         return row
@@ -236,19 +236,25 @@ def _with_terrain(settings: Settings, stations: xr.Dataset, report: ReadingRepor
 
 def locate_sites(
     settings: Settings,
-    weather: list[WeatherRecords],
+    named: Identities,
     stations: xr.Dataset,
     report: ReadingReport,
 ) -> xr.Dataset:
     """Barometers whose place is known; one named like a station may take its coordinates.
 
+    A `barometer_height` of the station table wins over the heights in the files.
     Dataset (site): longitude, latitude [degrees], orthometric_height [m].
     """
     rows = {}
-    for name, site in sorted(_sites(weather, "site_ids").items()):
-        row = _site_row(name, site, stations)
+    for name, site in named.sites.items():
+        if name in named.rows:
+            rows[name] = _listed_barometer(name, site, named.rows[name], report)
+            continue
+        row = _site_row(name, named.codes[name], site, stations)
         if row is None:
-            report.left_out[name] = "no position in its weather files, and no station of its name"
+            report.left_out[name] = (
+                "no position in its weather files, and not just one station of its name"
+            )
         else:
             rows[name] = row
     column = _columns(rows)
@@ -285,11 +291,29 @@ def report_climbs(
             )
 
 
-def _site_row(name: str, site: Site, stations: xr.Dataset) -> StationRow | None:
-    """Place of a barometer; what its file does not say is that of the station of the same name."""
-    ids = stations.station.values
-    same = [index for index, station in enumerate(ids) if name in (station, station[:4])]
-    station = stations.isel(station=same[0]) if same else None
+def _listed_barometer(name: str, site: Site, row: StationRow, report: ReadingReport) -> StationRow:
+    """Place of a barometer whose height stands in the station table."""
+    if abs(site.msl_height - row.barometer_height) > BAROMETER_HEIGHT:
+        report.warnings.append(
+            f"barometer {name}: its files say {site.msl_height:.1f} m above sea level, but "
+            f"barometer_height of stations.table is {row.barometer_height:.1f} m; the table is used"
+        )
+    return StationRow(
+        id=name,
+        longitude=row.longitude,
+        latitude=row.latitude,
+        ellipsoidal_height=site.ellipsoidal_height,
+        undulation=row.undulation,
+        orthometric_height=row.barometer_height,
+    )
+
+
+def _site_row(name: str, code: str, site: Site, stations: xr.Dataset) -> StationRow | None:
+    """Place of a barometer; what its file does not say is that of the one station of its code."""
+    ids = list(stations.station.values)
+    exact = [index for index, station in enumerate(ids) if station in (name, code)][:1]
+    same = exact or [index for index, station in enumerate(ids) if station[:4] == code]
+    station = stations.isel(station=same[0]) if len(same) == 1 else None
     placed = np.isfinite([site.longitude, site.latitude]).all()
     has_height = np.isfinite(site.ellipsoidal_height) or np.isfinite(site.msl_height)
     if station is None and not (placed and has_height):

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections import Counter
 from collections.abc import Callable
 from dataclasses import dataclass, field
-from typing import ClassVar
+from typing import ClassVar, NamedTuple
 
 import numpy as np
 
@@ -84,7 +84,15 @@ class Site:
     name: str = ""
 
 
-class _Records:
+class Stay(NamedTuple):
+    """A place of a station that moved, and the first and last epoch there, seconds since 1970."""
+
+    site: Site
+    first: float
+    last: float
+
+
+class Records:
     """What delays and weather have in common: records of several places, one after the other."""
 
     places: ClassVar[tuple[str, str]]
@@ -98,10 +106,15 @@ class _Records:
         """Identifiers of the stations or sites."""
         return getattr(self, self.places[0])
 
-    def series(self, identifier: str):
-        """Epochs (n,) and values by name (n,) of one station or site, in the order of the file."""
-        mine = getattr(self, self.places[1]) == self.identifiers.index(identifier)
-        return self.time[mine], {name: getattr(self, name)[mine] for name in self.values}
+    @property
+    def place(self) -> np.ndarray:
+        """Index (n,) of each record's station or site among the identifiers."""
+        return getattr(self, self.places[1])
+
+    def keep(self, wanted) -> None:
+        """Drop the records that `wanted` (n,) bool does not pick."""
+        for name in (self.places[1], "time", *self.values):
+            setattr(self, name, getattr(self, name)[wanted])
 
     def compact(self) -> None:
         """Hold the values in single precision, a ten-millionth of a delay, and what is absent not
@@ -116,7 +129,7 @@ class _Records:
 
 
 @dataclass
-class DelayRecords(_Records):
+class DelayRecords(Records):
     """Delays of one file, one element a record, in the order of the file.
 
     station : (n,) int, index into `station_ids`
@@ -125,6 +138,7 @@ class DelayRecords(_Records):
     pwv, pwv_sigma : (n,) [kg m-2], NaN where the file does not give it
     created : datetime64[s] of the file's header, NaT if it does not say
     sites : where the file says its stations are, by identifier
+    stays : places by identifier, in order of time, of stations that move within the file
     warnings : oddities of the file that cost no line, one sentence each
     """
 
@@ -140,19 +154,21 @@ class DelayRecords(_Records):
     pwv: np.ndarray
     pwv_sigma: np.ndarray
     sites: dict[str, Site] = field(default_factory=dict)
+    stays: dict[str, list[Stay]] = field(default_factory=dict)
     created: np.datetime64 = NO_TIME
     rejections: Rejections = field(default_factory=Rejections)
     warnings: list[str] = field(default_factory=list)
 
 
 @dataclass
-class WeatherRecords(_Records):
+class WeatherRecords(Records):
     """Surface weather of one file, one element a record, in the order of the file.
 
     site : (n,) int, index into `site_ids`
     time : (n,) datetime64[s], UTC
     pressure [hPa], temperature [K], relative_humidity [%] : (n,), NaN where not given
     sites : where the file says its barometers are, by identifier
+    created, stays, warnings : as for delays
     """
 
     places: ClassVar = ("site_ids", "site")
@@ -166,6 +182,8 @@ class WeatherRecords(_Records):
     temperature: np.ndarray
     relative_humidity: np.ndarray
     sites: dict[str, Site] = field(default_factory=dict)
+    stays: dict[str, list[Stay]] = field(default_factory=dict)
+    created: np.datetime64 = NO_TIME
     rejections: Rejections = field(default_factory=Rejections)
     warnings: list[str] = field(default_factory=list)
 

@@ -8,7 +8,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from fieldgen.errors import InputError
-from fieldgen.readers.assembly import WEATHER_VALUES, Rows, weather_records
+from fieldgen.readers.assembly import WEATHER_VALUES, Rows, convert_pressure, weather_records
 from fieldgen.readers.epochs import calendar_epoch
 from fieldgen.readers.positions import geodetic_position, is_on_the_ground
 from fieldgen.readers.records import LineError, Rejections, Site, WeatherRecords
@@ -47,20 +47,21 @@ def is_rinex_met(line: str) -> bool:
     return label_of(line) == VERSION
 
 
-def read_rinex_met(path, *, name: str | None = None) -> WeatherRecords:
-    """Pressure [hPa], temperature [K] and relative humidity [%] of one RINEX file, plain or gzip.
+def read_rinex_met(path, *, name: str | None = None, pressure_unit: str = "hPa") -> WeatherRecords:
+    """Pressure [hPa], temperature [K] and relative humidity [%] of one RINEX file.
 
     The site is called by its marker name, or as the file where that is blank. Its height is that of
     the barometer as the file gives it; some writers give it above mean sea level. Epochs in GPS
     time are taken as UTC, 18 s being far below the time step. Missing values are NaN. `name` stands
-    for the file in messages. Raises InputError if the header or the data cannot be used.
+    for the file in messages; `pressure_unit` is one of PRESSURE_UNITS, for writers who do not keep
+    to the format's hPa. Raises InputError if the header or the data cannot be used.
     """
     name = name or str(path)
     reading = _Reading(name, file_stem(path).upper())
     for number, line in read_lines(path, name, reading.rejections):
         if line.strip():
             reading.take(number, line)
-    return reading.records()
+    return reading.records(pressure_unit)
 
 
 def label_of(line: str) -> str:
@@ -282,15 +283,17 @@ class _Reading:
             self.rejections.add(self.file, self.record.line, "record cut short")
             self.record = None
 
-    def records(self) -> WeatherRecords:
+    def records(self, pressure_unit: str) -> WeatherRecords:
         """The records of the whole file."""
         if self.header is None or self.in_header:
             raise InputError(f"{self.file}: header does not end, expected a line {END}.")
         self._give_up_record()
+        columns = self.rows.columns()
+        convert_pressure(columns, pressure_unit)
         return weather_records(
             self.file,
             list(self.site_numbers),
-            self.rows.columns(),
+            columns,
             self.rejections,
             sites=self.sites,
             warnings=self.warnings,

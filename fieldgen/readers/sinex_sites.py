@@ -5,17 +5,19 @@ X, Y, Z are preferred to longitude and latitude, whose sign some files lose.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
+from itertools import pairwise
 
 import numpy as np
 
+from fieldgen.readers.epochs import SINEX_EPOCH, sinex_epoch
 from fieldgen.readers.positions import (
     check_position,
     distance_km,
     geodetic_position,
     is_on_the_ground,
 )
-from fieldgen.readers.records import LineError, Site
+from fieldgen.readers.records import LineError, Site, Stay
 
 SAME_PLACE_KM = 1.0
 """Positions of one station that differ by more are worth a warning."""
@@ -25,6 +27,9 @@ SAME_HEIGHT_M = 10.0
 
 UNDULATIONS = (-110.0, 90.0)
 """Geoid heights [m] that occur on Earth: ellipsoidal minus mean-sea-level height."""
+
+OPEN = (-np.inf, np.inf)
+"""An interval without ends."""
 
 ID, XYZ = "SITE/ID", "SITE/COORDINATES"
 
@@ -36,6 +41,9 @@ class Entry:
     station: str
     point: str
     site: Site
+    first: float = -np.inf
+    last: float = np.inf
+    """Seconds since 1970 between which the place holds."""
 
 
 def parse_site_id(text: str) -> Entry:
@@ -67,8 +75,26 @@ def parse_coordinates(text: str) -> Entry:
     for start in range(1, len(words) - 2):
         xyz = [_float(word) for word in words[start : start + 3]]
         if is_on_the_ground(*xyz):
-            return Entry(words[0].upper(), _point(words), Site(*geodetic_position(*xyz)))
+            site = Site(*geodetic_position(*xyz))
+            return Entry(words[0].upper(), _point(words), site, *_interval(words[1:start]))
     raise LineError("no position", f"line begins {text.strip()[:40]!r}")
+
+
+def _interval(words: list[str]) -> tuple[float, float]:
+    """The epochs between which a position holds; one that is absent, or zero, leaves it open."""
+    epochs = [word for word in words if SINEX_EPOCH.fullmatch(word)]
+    if len(epochs) != 2:
+        return -np.inf, np.inf
+    first, last = (_epoch_or(text, open_) for text, open_ in zip(epochs, OPEN, strict=True))
+    return (first, last) if first < last else OPEN
+
+
+def _epoch_or(text: str, otherwise: float) -> float:
+    """Seconds of an epoch; `otherwise` for none, such as 00:000:00000."""
+    try:
+        return float(sinex_epoch(text))
+    except ValueError:
+        return otherwise
 
 
 def _split_trailing_numbers(text: str) -> tuple[list[str], list[str]]:
@@ -110,13 +136,15 @@ def _float(word: str) -> float:
 class SiteBlocks:
     """The entries of one file's site blocks, by station, point and block."""
 
-    entries: dict[str, dict[str, dict[str, list[Site]]]] = field(default_factory=dict)
+    entries: dict[str, dict[str, dict[str, list[Entry]]]] = field(default_factory=dict)
+    stays: dict[str, list[Stay]] = field(default_factory=dict)
+    """Places by identifier, in order of time, of the stations that move; `sites` fills it."""
     warnings: list[str] = field(default_factory=list)
 
     def add(self, block: str, entry: Entry) -> None:
         """Take in one line of `block` (ID or XYZ)."""
         blocks = self.entries.setdefault(entry.station, {ID: {}, XYZ: {}})
-        blocks[block].setdefault(entry.point, []).append(entry.site)
+        blocks[block].setdefault(entry.point, []).append(entry)
 
     def sites(self) -> tuple[dict[str, Site], set[str]]:
         """Sites by identifier, and the station codes that several places share.
@@ -130,6 +158,7 @@ class SiteBlocks:
             if len(places) > 1 and _spread_km(places.values()) > SAME_PLACE_KM:
                 shared.add(station)
                 sites |= {f"{station}_{point}": site for point, site in places.items()}
+                self.stays.pop(station, None)
                 self.warnings.append(
                     f"station {station}: points {', '.join(places)} are"
                     f" {_spread_km(places.values()):.0f} km apart, expected one place a code."
@@ -152,18 +181,29 @@ class SiteBlocks:
             for point in points
         }
 
-    def _place(self, station: str, from_id: list[Site], from_xyz: list[Site]) -> Site:
+    def _place(self, station: str, from_id: list[Entry], from_xyz: list[Entry]) -> Site:
         """One place from what the blocks say of it, with warnings where they disagree."""
-        for block, found in ((ID, from_id), (XYZ, from_xyz)):
-            if found and _spread_km(found) > SAME_PLACE_KM:
+        in_turn = sorted(from_xyz, key=lambda entry: entry.first)
+        moves = len(in_turn) > 1 and all(a.last <= b.first for a, b in pairwise(in_turn))
+        for block, found in ((ID, from_id), (XYZ, [] if moves else from_xyz)):
+            spread = _spread_km([entry.site for entry in found]) if found else 0.0
+            if spread > SAME_PLACE_KM:
                 self.warnings.append(
-                    f"station {station}: positions in {block} are {_spread_km(found):.0f} km"
+                    f"station {station}: positions in {block} are {spread:.0f} km"
                     " apart, expected one place. The first is used."
                 )
-        if not from_id or not from_xyz:
-            site = (from_id or from_xyz)[0]
+        by_id = from_id[0].site if from_id else None
+        if not from_xyz:
+            site = by_id
+        elif by_id is None:
+            site = (in_turn[-1] if moves else from_xyz[0]).site
         else:
-            site = self._preferred(station, from_id[0], from_xyz[0])
+            site = self._preferred(station, by_id, in_turn[-1].site if moves else from_xyz[0].site)
+        if moves:
+            self.stays[station] = [
+                Stay(_with_undulation_of(entry.site, site), entry.first, entry.last)
+                for entry in in_turn
+            ]
         self._check_undulation(station, site)
         return site
 
@@ -193,6 +233,12 @@ class SiteBlocks:
                 f"station {station}: ellipsoidal minus mean-sea-level height is {undulation:.1f} m,"
                 f" expected {UNDULATIONS[0]:g} to {UNDULATIONS[1]:g} m."
             )
+
+
+def _with_undulation_of(site: Site, other: Site) -> Site:
+    """A place with the name and the geoid height of another one of the same station."""
+    undulation = other.ellipsoidal_height - other.msl_height
+    return replace(site, msl_height=site.ellipsoidal_height - undulation, name=other.name)
 
 
 def _spread_km(sites) -> float:

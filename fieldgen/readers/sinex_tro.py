@@ -163,7 +163,7 @@ class _Reading:
 
     def _take_header_or_trailer(self, line: str) -> None:
         if is_sinex_tro(line):
-            self.begun = True
+            self.begun, self.ended = True, False
             self.created = _created(line)
             self.block = OUTSIDE
         elif "END" in line.upper():
@@ -246,6 +246,7 @@ class _Reading:
             columns,
             self.rejections,
             sites=sites,
+            stays=self.site_blocks.stays,
             created=self.created,
             warnings=self.warnings + self.site_blocks.warnings,
         )

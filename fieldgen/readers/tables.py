@@ -5,6 +5,7 @@ from __future__ import annotations
 import csv
 from collections.abc import Iterator
 from dataclasses import dataclass, field
+from functools import partial
 from typing import NamedTuple
 
 import numpy as np
@@ -16,18 +17,19 @@ from fieldgen.readers.assembly import (
     Columns,
     Rows,
     check_anything_usable,
+    convert_pressure,
     delay_records,
     weather_records,
 )
 from fieldgen.readers.epochs import iso_epoch
 from fieldgen.readers.positions import check_position, distance_km
 from fieldgen.readers.records import DelayRecords, LineError, Rejections, Site, WeatherRecords
+from fieldgen.readers.stated_places import StatedPlaces
 from fieldgen.readers.text import first_content_line, read_lines
 
 DELIMITERS = ",;\t"
 MISSING_WORDS = ("", "nan", "na", "null", "none", "-")
 LONGEST_IDENTIFIER = 40
-SAME_PLACE_KM = 1.0
 
 
 class TableKind(NamedTuple):
@@ -60,7 +62,7 @@ WEATHER_TABLE = TableKind(
 STATION_TABLE = TableKind(
     ("id", "longitude", "latitude", "ellipsoidal_height"),
     (),
-    ("undulation", "orthometric_height", "name"),
+    ("undulation", "orthometric_height", "barometer_height", "name"),
 )
 """longitude, latitude [degrees], heights and undulation [m]"""
 
@@ -70,7 +72,8 @@ class StationRow:
     """A station as the station table gives it; NaN where a column is blank or absent.
 
     longitude, latitude [degrees], longitude in -180 to 180; heights and undulation [m], undulation
-    = ellipsoidal_height - orthometric_height.
+    = ellipsoidal_height - orthometric_height; barometer_height is that of the barometer of the same
+    identifier, above sea level.
     """
 
     id: str
@@ -80,6 +83,7 @@ class StationRow:
     undulation: float = np.nan
     orthometric_height: float = np.nan
     name: str = ""
+    barometer_height: float = np.nan
 
 
 def read_delay_table(path, *, name: str | None = None) -> DelayRecords:
@@ -90,16 +94,19 @@ def read_delay_table(path, *, name: str | None = None) -> DelayRecords:
     """
     name = name or str(path)
     table = Table(name, *read_header(path, name, DELAY_TABLE))
-    columns, places = _read_records(path, table, "station", DELAY_VALUES)
-    return delay_records(name, list(places.ids), columns, table.rejections, **places.about())
+    ids, columns, places = _read_records(path, table, "station", DELAY_VALUES)
+    return delay_records(name, ids, columns, table.rejections, **places)
 
 
-def read_weather_table(path, *, name: str | None = None) -> WeatherRecords:
-    """Weather of a table with the columns of WEATHER_TABLE, plain or gzip; else as the delays."""
+def read_weather_table(
+    path, *, name: str | None = None, pressure_unit: str = "hPa"
+) -> WeatherRecords:
+    """Weather of a table with the columns of WEATHER_TABLE; else as the delays."""
     name = name or str(path)
     table = Table(name, *read_header(path, name, WEATHER_TABLE))
-    columns, places = _read_records(path, table, "site", WEATHER_VALUES)
-    return weather_records(name, list(places.ids), columns, table.rejections, **places.about())
+    ids, columns, places = _read_records(path, table, "site", WEATHER_VALUES)
+    convert_pressure(columns, pressure_unit)
+    return weather_records(name, ids, columns, table.rejections, **places)
 
 
 def read_station_table(
@@ -259,11 +266,14 @@ def parse_station(row: dict[str, str]) -> StationRow:
     longitude, latitude, ellipsoidal, orthometric = parse_place(identifier, row)
     if np.isnan(longitude):
         raise LineError("no position", identifier)
-    if np.isnan([ellipsoidal, orthometric]).all():
+    barometer = parse_number(row, "barometer_height")
+    if np.isnan([ellipsoidal, orthometric, barometer]).all():
         raise LineError("no height", identifier)
     undulation = parse_number(row, "undulation")
     name = row.get("name", "")
-    return StationRow(identifier, longitude, latitude, ellipsoidal, undulation, orthometric, name)
+    return StationRow(
+        identifier, longitude, latitude, ellipsoidal, undulation, orthometric, name, barometer
+    )
 
 
 EXCHANGED_KM, NETWORK_KM = 300.0, 1000.0
@@ -287,55 +297,23 @@ def exchanged_positions(stations: list[StationRow]) -> list[StationRow]:
     ]
 
 
-@dataclass
-class _Places:
-    """Stations or sites of a file, each with the first place that the file gives it."""
-
-    ids: dict[str, int] = field(default_factory=dict)
-    sites: dict[str, Site] = field(default_factory=dict)
-    last_cells: dict[str, tuple] = field(default_factory=dict)
-    moved: dict[str, float] = field(default_factory=dict)
-
-    def number(self, identifier: str, row: dict[str, str]) -> int:
-        """Index of an identifier; its place is parsed where it differs from the line before."""
-        cells = tuple(row.get(column, "") for column in PLACE)
-        if self.last_cells.get(identifier) != cells:
-            site = Site(*parse_place(identifier, row))
-            self.last_cells[identifier] = cells
-            self._compare(identifier, self.sites.setdefault(identifier, site), site)
-        return self.ids.setdefault(identifier, len(self.ids))
-
-    def _compare(self, identifier: str, first: Site, now: Site) -> None:
-        """Remember the largest distance [km] from the first place."""
-        apart = distance_km(first.longitude, first.latitude, now.longitude, now.latitude)
-        if apart > max(SAME_PLACE_KM, self.moved.get(identifier, 0.0)):
-            self.moved[identifier] = apart
-
-    def about(self) -> dict:
-        """The sites of which the file says something, and a warning for each that moves."""
-        sites = {
-            key: site
-            for key, site in self.sites.items()
-            if not np.isnan([site.longitude, site.ellipsoidal_height, site.msl_height]).all()
-        }
-        warnings = [
-            f"{key}: positions are {apart:.0f} km apart, expected one place. The first is used."
-            for key, apart in self.moved.items()
-        ]
-        return {"sites": sites, "warnings": warnings}
-
-
 def _read_records(
     path, table: Table, id_column: str, value_names: tuple[str, ...]
-) -> tuple[Columns, _Places]:
-    """Records, and the places they refer to."""
-    places, rows = _Places(), Rows(value_names)
+) -> tuple[list[str], Columns, dict]:
+    """Identifiers, records that refer to them, and what the file says of their places."""
+    places, rows = StatedPlaces(), Rows(value_names)
     for number, row in table.rows(path):
         try:
             identifier = parse_identifier(row[id_column])
             time = parse_time(row["time"])
             values = [parse_number(row, name) for name in value_names]
-            rows.add(number, places.number(identifier, row), time, *values)
+            cells = tuple(row.get(column, "") for column in PLACE)
+            place = places.number(identifier, cells, time, partial(_site, identifier, row))
+            rows.add(number, place, time, *values)
         except LineError as error:
             table.reject(number, error)
-    return rows.columns(), places
+    return places.tell(rows.columns(), table.file, table.rejections)
+
+
+def _site(identifier: str, row: dict[str, str]) -> Site:
+    return Site(*parse_place(identifier, row))

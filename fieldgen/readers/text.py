@@ -1,7 +1,7 @@
-"""Text files, plain or gzip, as blocks of whole lines or as lines; memory stays bounded.
+"""Text files as blocks of whole lines or as lines, memory staying bounded.
 
-Gzip is known by its first bytes, whatever the file is called. Text is UTF-8, or Latin-1 where it is
-not valid UTF-8. Lines end in LF or CRLF.
+Plain, gzip or compress (.Z), known by the first bytes, whatever the file is called. Text is UTF-8,
+or Latin-1 where it is not valid UTF-8. Lines end in LF or CRLF.
 """
 
 from __future__ import annotations
@@ -10,6 +10,7 @@ import gzip
 import zlib
 from collections.abc import Iterator
 from contextlib import contextmanager
+from io import BufferedReader
 from pathlib import Path
 from typing import IO, NamedTuple
 
@@ -19,13 +20,19 @@ from fieldgen.readers.records import Rejections
 LONGEST_LINE = 10_000
 """Longest line [bytes] that is read; no format here comes near it."""
 
+FEW_BYTES = 1 << 14
+"""Size of a block [bytes] where only the first line is wanted."""
+
+BEGINNING_BYTES = 300
+"""Bytes by which a binary file is known."""
+
 CHUNK_BYTES = 1 << 22
 """Size of a block [bytes]: about 50 000 lines."""
 
 GZIP_MAGIC = b"\x1f\x8b"
+COMPRESS_MAGIC = b"\x1f\x9d"
 UTF8_MARK = b"\xef\xbb\xbf"
 OTHER_COMPRESSION = {
-    b"\x1f\x9d": "compress (.Z)",
     b"BZh": "bzip2",
     b"PK\x03\x04": "zip",
     b"\xfd7zXZ": "xz",
@@ -44,7 +51,9 @@ class Chunk(NamedTuple):
 
 @contextmanager
 def open_bytes(path, name: str) -> Iterator[IO[bytes]]:
-    """An open binary file, decompressed on the way if it is gzip.
+    """An open binary file, decompressed on the way if it is gzip or compress.
+
+    Data of compress have no checksum: that they are whole, only their text can tell.
 
     Raises InputError, which begins with `name`, where the file cannot be opened or read to its end.
     """
@@ -55,6 +64,9 @@ def open_bytes(path, name: str) -> Iterator[IO[bytes]]:
             _check_compression(start, name)
             if start.startswith(GZIP_MAGIC):
                 with gzip.open(raw) as unpacked:
+                    yield unpacked
+            elif start.startswith(COMPRESS_MAGIC):
+                with _open_compress(raw, name) as unpacked:
                     yield unpacked
             else:
                 yield raw
@@ -70,12 +82,27 @@ def open_bytes(path, name: str) -> Iterator[IO[bytes]]:
         raise InputError(f"{name}: cannot be read ({error.strerror or error}).") from error
 
 
+@contextmanager
+def _open_compress(raw: IO[bytes], name: str) -> Iterator[IO[bytes]]:
+    """What a file of the Unix tool compress holds."""
+    from uncompresspy import LZWFile
+
+    try:
+        with LZWFile(raw, warn_truncation=False, save_checkpoints=False) as unpacked:
+            yield BufferedReader(unpacked)
+    except (ValueError, IndexError) as error:
+        raise InputError(
+            f"{name}: compress (.Z) data are damaged ({error}). Fetch the file again."
+        ) from error
+
+
 def _check_compression(start: bytes, name: str) -> None:
     """Refuse what is compressed in a way that is not read here."""
     for magic, kind in OTHER_COMPRESSION.items():
         if start.startswith(magic):
             raise InputError(
-                f"{name}: compression is {kind}, expected plain text or gzip. Unpack it first."
+                f"{name}: compression is {kind}, expected plain text, gzip or compress (.Z)."
+                " Unpack it first."
             )
 
 
@@ -102,9 +129,11 @@ def decode(data: bytes) -> str:
         return data.decode("latin-1")
 
 
-def read_lines(path, name: str, rejections: Rejections) -> Iterator[tuple[int, str]]:
+def read_lines(
+    path, name: str, rejections: Rejections, size: int = CHUNK_BYTES
+) -> Iterator[tuple[int, str]]:
     """Line number (from 1) and text without its line ending; lines too long are rejected."""
-    for chunk in read_chunks(path, name):
+    for chunk in read_chunks(path, name, size):
         lines = chunk.data.removesuffix(b"\n").split(b"\n")
         for number, line in enumerate(lines, chunk.first_line):
             if len(line) > LONGEST_LINE:
@@ -118,14 +147,20 @@ def reject_long_line(rejections: Rejections, name: str, line: int) -> None:
     rejections.add(name, line, "line too long", f"more than {LONGEST_LINE} bytes")
 
 
+def first_bytes(path, name: str) -> bytes:
+    """The first BEGINNING_BYTES of a file, or all of it, decompressed."""
+    with open_bytes(path, name) as stream:
+        return stream.read(BEGINNING_BYTES)
+
+
 def first_content_line(path, name: str) -> str:
     """The first line that is neither empty nor a `#` comment, '' if there is none."""
-    for _, line in read_lines(path, name, Rejections()):
+    for _, line in read_lines(path, name, Rejections(), FEW_BYTES):
         if line.strip() and not line.lstrip().startswith("#"):
             return line
     return ""
 
 
 def file_stem(path) -> str:
-    """Name of a file without folder, `.gz` and its last suffix."""
-    return Path(Path(path).name.removesuffix(".gz")).stem
+    """Name of a file without folder, `.gz` or `.Z`, and its last suffix."""
+    return Path(Path(path).name.removesuffix(".gz").removesuffix(".Z")).stem

@@ -54,18 +54,18 @@ def write_network(
     side = cells * 1000
     settings = SETTINGS.format(east=300000 + side, north=5100000 + side)
     (folder / "network.toml").write_text(settings)
-    terrain = _write_terrain(folder, cells, draw)
+    terrain = write_terrain(folder, cells, draw)
     x, y = draw.uniform(0.02, 0.98, (2, stations)) * side
     height = terrain[cells - 1 - (y / 1000).astype(int), (x / 1000).astype(int)]
     values = _water_vapour(x, y, height, hours, draw)
     values[_outages(hours, stations, gap_share, draw)] = np.nan
-    _write_stations(folder, x, y, height)
+    write_stations(folder, x, y, height)
     _write_weather(folder, hours)
-    _write_delays(folder, _zenith_delay(height, values))
+    _write_delays(folder, zenith_delay(height, values))
     return folder / "network.toml"
 
 
-def _write_terrain(folder: Path, cells: int, draw):
+def write_terrain(folder: Path, cells: int, draw):
     """Hills up to about 1500 m, heights (cells, cells), north row first."""
     relief = gaussian_filter(draw.normal(size=(cells, cells)), cells / 25)
     terrain = np.clip(relief / np.abs(relief).max() * 1500.0 + 200.0, 0.0, None).astype(np.float32)
@@ -99,7 +99,7 @@ def _outages(hours: int, stations: int, share: float, draw):
     return missing
 
 
-def _write_stations(folder: Path, x, y, height) -> None:
+def write_stations(folder: Path, x, y, height) -> None:
     import pyproj
 
     to_degrees = pyproj.Transformer.from_crs("EPSG:32626", "EPSG:4326", always_xy=True)
@@ -122,7 +122,7 @@ def _write_weather(folder: Path, hours: int) -> None:
     (folder / "weather.csv").write_text("\n".join(lines) + "\n")
 
 
-def _zenith_delay(height, water_vapour):
+def zenith_delay(height, water_vapour):
     """Delays (hours, stations) [m] of the standard atmosphere with water vapour [kg m-2]."""
     pressure = 1013.25 * (1.0 - 0.0065 * height / 288.15) ** 5.2559
     return 0.0022768 * pressure + water_vapour / 155.0

@@ -5,6 +5,7 @@ The files are built from the format's description, so the expected values are th
 
 from dataclasses import replace
 
+import ncompress
 import numpy as np
 import pytest
 
@@ -459,10 +460,12 @@ def test_read_sinex_tro_refuses(tmp_path, sinex, message):
     ("content", "message"),
     [
         (b"", "nothing in the file"),
-        (b"\x1f\x9d\x90rest", r"compression is compress \(.Z\)"),
+        (b"BZh91AY&SY", "compression is bzip2, expected plain text, gzip or compress"),
+        (b"\x1f\x9d\x90" + b"\xff" * 50, r"compress \(.Z\) data are damaged"),
+        (b"\x1f\x9d", r"compress \(.Z\) data are damaged"),
         (b"\x1f\x8b\x08\x00garbage", "gzip data"),
     ],
-    ids=["empty", "compress", "bad gzip"],
+    ids=["empty", "bzip2", "bad compress", "cut compress", "bad gzip"],
 )
 def test_read_sinex_tro_refuses_files_that_are_no_text(tmp_path, content, message):
     path = tmp_path / "network.tro"
@@ -485,6 +488,53 @@ def test_read_sinex_tro_refuses_cut_gzip(tmp_path):
     path.write_bytes(path.read_bytes()[:-20])
     with pytest.raises(InputError, match="gzip data end early"):
         read_sinex_tro(path)
+
+
+def write_compress(folder, text, name):
+    """The path of a new file of the Unix tool compress, packed by another library."""
+    path = folder / name
+    path.write_bytes(ncompress.compress(text.encode()))
+    return path
+
+
+def test_read_sinex_tro_reads_compress_under_any_name(tmp_path):
+    """Another library: ncompress packs what is read here."""
+    for name in ("network.tro.Z", "network.tro"):
+        records = read_sinex_tro(write_compress(tmp_path, SinexFile().text(), name))
+        assert len(records.ztd) == 4 and records.warnings == []
+
+
+def test_read_chunks_of_compress_gives_every_byte(tmp_path):
+    """Another library: 3 MB that fill the table of codes several times."""
+    draw = np.random.default_rng(1)
+    lines = "".join(f" ARDA00ATL {value:.9f}\n" for value in draw.random(150_000))
+    path = write_compress(tmp_path, lines, "data.Z")
+    chunks = list(text.read_chunks(path, "f", 100_000))
+    assert max(len(chunk.data) for chunk in chunks) < 120_000
+    assert b"".join(chunk.data for chunk in chunks) == lines.encode()
+
+
+def test_read_sinex_tro_refuses_damaged_compress(tmp_path):
+    """Damage anywhere is an InputError, or lines that are rejected: never another error."""
+    path = write_compress(tmp_path, SinexFile().text() * 20, "network.tro.Z")
+    whole, draw, refused = path.read_bytes(), np.random.default_rng(2), 0
+    for _ in range(60):
+        content = bytearray(whole)
+        start = int(draw.integers(2, len(content)))
+        content[start : start + 20] = draw.bytes(20)
+        path.write_bytes(content)
+        try:
+            read_sinex_tro(path)
+        except InputError:
+            refused += 1
+    assert refused > 20
+
+
+def test_read_sinex_tro_warns_of_compress_cut_short(tmp_path):
+    """These data have no checksum; the missing trailer tells."""
+    path = write_compress(tmp_path, SinexFile().text() * 20, "network.tro.Z")
+    path.write_bytes(path.read_bytes()[:-40])
+    assert any("cut short" in text for text in read_sinex_tro(path).warnings)
 
 
 def test_read_sinex_tro_refuses_a_missing_file(tmp_path):

@@ -151,17 +151,31 @@ def test_read_delay_table_counts_impossible_places(tmp_path, place, detail):
     assert records.station_ids == ["BELU"]
 
 
-def test_read_delay_table_warns_of_a_station_that_moves(tmp_path):
-    content = PLACED + "".join(
+def placed_lines(*longitudes):
+    return PLACED + "".join(
         f"ARDA,2030-01-31T0{hour}:00,2.4,{longitude},47.7391,120,\n"
-        for hour, longitude in enumerate((-27.8112, -28.8112, -27.8113))
+        for hour, longitude in enumerate(longitudes)
     )
-    records = read_delay_table(write(tmp_path, content))
-    assert len(records.ztd) == 3
-    assert records.warnings == [
-        "ARDA: positions are 75 km apart, expected one place. The first is used."
+
+
+def test_read_delay_table_tells_where_a_station_was_when(tmp_path):
+    records = read_delay_table(write(tmp_path, placed_lines(-27.8112, -28.8112, -28.8112)))
+    assert len(records.ztd) == 3 and records.station_ids == ["ARDA"]
+    before, after = records.stays["ARDA"]
+    assert (before.site.longitude, after.site.longitude) == (-27.8112, -28.8112)
+    assert (before.last, after.first, after.last - after.first) == (
+        iso_epoch("2030-01-31T00:00"), iso_epoch("2030-01-31T01:00"), 3600
+    )  # fmt: skip
+
+
+def test_read_delay_table_rejects_a_second_place_at_the_same_time(tmp_path):
+    records = read_delay_table(write(tmp_path, placed_lines(-27.8112, -28.8112, -27.8112)))
+    assert records.time.tolist() == [
+        np.datetime64(f"2030-01-31T0{hour}:00:00").tolist() for hour in (0, 2)
     ]
-    assert records.sites["ARDA"].longitude == -27.8112
+    assert counts(records.rejections) == {"several places at the same time": 1}
+    assert records.rejections.examples[0].line == 3
+    assert records.sites["ARDA"].longitude == -27.8112 and records.stays == {}
 
 
 def test_read_weather_table_gives_records(tmp_path):
