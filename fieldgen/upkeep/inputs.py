@@ -12,6 +12,7 @@ from pydantic import BaseModel
 from fieldgen.products.atomic import whole_file
 from fieldgen.products.metadata import fieldgen_version
 from fieldgen.readers.network import find_files
+from fieldgen.readers.records import ReadingReport
 from fieldgen.settings import Settings
 from fieldgen.upkeep.lock import STATE
 
@@ -30,7 +31,7 @@ def list_inputs(path: Path, settings: Settings) -> dict:
     Raises InputError as `find_files` does.
     """
     kinds = [name for name, patterns in settings.stations if isinstance(patterns, list)]
-    found = [file for kind in kinds for file in find_files(settings, kind)]
+    found = [file for kind in kinds for file in find_files(settings, kind, ReadingReport())]
     files = {str(file): _size_and_time(file) for file in [path, *found, *_named_files(settings)]}
     return {"fieldgen_version": fieldgen_version(), "files": files}
 
