@@ -12,6 +12,7 @@ import sys
 from pathlib import Path
 
 from fieldgen.errors import FieldgenError, OutputError
+from fieldgen.plain_text import file_name, printable
 
 _DESCRIPTION = (
     "Hourly maps and grids of precipitable water vapour from the zenith delays of a regional GNSS "
@@ -29,7 +30,7 @@ def main(arguments: list[str] | None = None) -> int:
     try:
         return options.run(options)
     except FieldgenError as error:
-        print(f"fieldgen: {error}", file=sys.stderr)
+        _show(f"fieldgen: {error}", sys.stderr)
         return 1
     except KeyboardInterrupt:
         print("fieldgen: interrupted; files already written are whole.", file=sys.stderr)
@@ -37,6 +38,14 @@ def main(arguments: list[str] | None = None) -> int:
     except BrokenPipeError:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return 1
+
+
+def _show(text: str, file=None) -> None:
+    """Print a text that may hold names from outside, escaped so that none commands the terminal."""
+    file = file or sys.stdout
+    encoding = file.encoding or "utf-8"
+    text = printable(text).encode(encoding, "backslashreplace").decode(encoding)
+    print(text, file=file)
 
 
 def _make_parser() -> argparse.ArgumentParser:
@@ -168,7 +177,7 @@ def _make(options: argparse.Namespace) -> int:
             jobs=options.jobs,
             progress=progress.made,
         )
-    print(format_run(run))
+    _show(format_run(run))
     return 0
 
 
@@ -180,7 +189,7 @@ def _check(options: argparse.Namespace) -> int:
     with Progress() as progress:
         network = _read(options.network, progress)
         stations = retrieve_water_vapour(network)
-    print(format_check(network, stations))
+    _show(format_check(network, stations))
     return 0
 
 
@@ -207,8 +216,8 @@ def _score(options: argparse.Namespace) -> int:
         report = report_score(network, score)
         paths = write_score(report, folder)
         write_picture(report, folder / "score.png")
-    print(format_score(report))
-    print(f"{len(paths) + 1} files written to {folder}")
+    _show(format_score(report))
+    _show(f"{len(paths) + 1} files written to {folder}")
     return 0
 
 
@@ -220,10 +229,10 @@ def _compare(options: argparse.Namespace) -> int:
     if options.out is not None:
         _check_writable(options.out)
     comparison = compare(options.fields, options.observations)
-    print(format_comparison(comparison))
+    _show(format_comparison(comparison))
     if options.out is not None:
         paths = write_comparison(comparison, options.out)
-        print(f"{len(paths)} files written to {options.out}")
+        _show(f"{len(paths)} files written to {options.out}")
     return 0
 
 
@@ -242,8 +251,7 @@ def _read(path: Path, progress):
 
 def folder_name(name: str) -> str:
     """Name of a folder made from the network's name: nothing in it can leave `outputs`."""
-    kept = "".join(letter if letter.isalnum() or letter in "-_ ." else "_" for letter in name)
-    return kept.strip(" .") or "network"
+    return file_name(name, "network")
 
 
 def _check_writable(folder: Path) -> None:

@@ -107,7 +107,8 @@ class _Records:
         """Hold the values in single precision, a ten-millionth of a delay, and what is absent not
         at all: a year of records must fit in memory."""
         index = self.places[1]
-        setattr(self, index, getattr(self, index).astype(np.int16))
+        narrow = np.int16 if len(self.identifiers) <= np.iinfo(np.int16).max else np.int32
+        setattr(self, index, getattr(self, index).astype(narrow))
         for name in self.values:
             values = getattr(self, name)
             absent = np.isnan(values).all()
