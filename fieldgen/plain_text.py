@@ -29,5 +29,5 @@ def file_name(text: str, default: str) -> str:
 
 
 def cell(text: str) -> str:
-    """A text for a cell of a table; an apostrophe keeps spreadsheets from taking it for a formula."""
+    """A text for a cell of a table; an apostrophe keeps spreadsheets from reading a formula."""
     return f"'{text}" if text.startswith(("=", "+", "-", "@")) else text

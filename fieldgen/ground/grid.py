@@ -69,14 +69,15 @@ class Grid:
 
 def read_crs(text: str, where: str) -> pyproj.CRS:
     """CRS from a text that names it; raises GridError that names `where` it stands."""
+    shown = repr(text[:80])
     try:
         crs = pyproj.CRS.from_user_input(text)
     except (pyproj.exceptions.CRSError, ValueError, TypeError):
         raise GridError(
-            f'{where}: is {text[:80]!r}, expected a CRS such as "EPSG:32626".'
+            f'{where}: is {shown}, expected a CRS such as "EPSG:32626".'
         ) from None
     if not (crs.is_projected or crs.is_geographic):
-        raise GridError(f"{where}: is {text[:80]!r}, expected a projected or geographic CRS.")
+        raise GridError(f"{where}: is {shown}, expected a projected or geographic CRS.")
     return crs
 
 
@@ -94,7 +95,7 @@ def read_grid(path: Path) -> Grid:
             y, dy = _axis(dataset, path, ("projection_y_coordinate", "latitude"), "y")
             if len(x) * len(y) > MOST_CELLS:
                 raise GridError(
-                    f"{path}: the grid has {len(x)} x {len(y)} cells, expected at most {MOST_CELLS}."
+                    f"{path}: cells are {len(x)} x {len(y)}, expected at most {MOST_CELLS}."
                 )
             return Grid(_file_crs(dataset, path), x, y, (dx, dy))
     except (OSError, ValueError, RuntimeError, LookupError, TypeError, AttributeError) as error:

@@ -64,7 +64,7 @@ def read_terrain(path: Path, grid: Grid, lowest_land: float = SEA_LEVEL) -> Terr
     side = len(fine) // ny
     if not fine.max() <= HIGHEST_LAND:
         raise InputError(
-            f"{path}: the terrain is {fine.max():.7g} m, expected at most {HIGHEST_LAND:g} m. Declare "
+            f"{path}: the terrain is {fine.max():.7g} m, expected at most {HIGHEST_LAND:g} m. Name "
             "the value that stands for none in the file."
         )
     points = fine.reshape(ny, side, nx, side).transpose(1, 3, 0, 2).reshape(-1, ny, nx)

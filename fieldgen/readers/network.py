@@ -20,6 +20,10 @@ from fieldgen.readers.tables import StationRow, read_station_table
 from fieldgen.readers.time_grid import TimeGrid, spikes, step_means
 from fieldgen.settings import Settings, read_settings
 
+MOST_VALUES = 40_000_000
+"""Steps times stations of a run: ten years of hours of 450 stations, or one of five minutes of 380.
+Each takes 32 bytes."""
+
 SPIKE_WINDOW = np.timedelta64(3600, "s")
 """Records are held against the median of their hour, however long a step is."""
 
@@ -67,7 +71,7 @@ def read_network(path: str | Path, progress: Callable[[str], None] = lambda file
             "no barometer: delays in metres cannot become water vapour. Name weather files in "
             "stations.weather."
         )
-    time = _time_grid(settings, delays)
+    time = _time_grid(settings, delays, stations.sizes["station"])
     return Network(
         settings=settings,
         grid=grid,
@@ -153,9 +157,18 @@ def _read_table(settings: Settings, report: ReadingReport) -> dict[str, StationR
     return rows
 
 
-def _time_grid(settings: Settings, delays: list[DelayRecords]) -> TimeGrid:
+def _time_grid(settings: Settings, delays: list[DelayRecords], stations: int) -> TimeGrid:
     step = np.timedelta64(int(settings.network.time_step.total_seconds()), "s")
-    return TimeGrid.around(np.concatenate([np.unique(records.time) for records in delays]), step)
+    time = TimeGrid.around(np.concatenate([np.unique(records.time) for records in delays]), step)
+    if (time.end - time.start) // step * stations > MOST_VALUES:
+        first = min(delays, key=lambda records: records.time.min())
+        last = max(delays, key=lambda records: records.time.max())
+        raise InputError(
+            f"stations.delays: {stations} stations report from {first.time.min()} ({first.file}) to "
+            f"{last.time.max()} ({last.file}), expected at most {MOST_VALUES} values at steps of "
+            "network.time_step. Name fewer files, or take out a record of a wrong year."
+        )
+    return time
 
 
 def _grid_delays(

@@ -62,6 +62,49 @@ def spoil(data: bytes, steps) -> bytes:
     return data
 
 
+VALUES = (
+    "nan", "-nan", "inf", "-inf", "0", "-1", "1", "3", "1e308", "-1e308", "1e-308", "1e-9", "1e9",
+    "-0.0", "500", "10000", "9" * 400, "9" * 4400, "0x" + "f" * 5000, "true", "[]", "[[]]", "{}",
+    "{a = 1}", "[1, 2]", "[2, 1]", "[0, 1e308]", "[nan, 1]", "1979-05-27", "07:32:00",
+    "1979-05-27T07:32:00Z", '""', '" "', '"\\u0000"', '"\\u001B[31m"', '"\\u202E"', '"a\\nb"',
+    '"/dev/zero"', '"/"', '"."', '".."', '"**"', '"../../etc/x"', '"[a"', '"linear"', '"pykrige"',
+    '"auto"', '"EPSG:4326"', '"EPSG:4978"', '"EPSG:99999999999999999999"', '"+proj=laea"',
+    '"+proj=pipeline"', '"{}"', '"1h"', '"1d"', '"999999d"', '"9999999d"', '"²h"', '"0h"',
+    f'"{"x" * 300}"', f'"{"x" * 100_000}"', f'"{"é" * 120}"', '"terrain.tif"', '"delays.csv"',
+    '["delays.csv", "delays.csv"]', "[" * 900 + "]" * 900, "{a = " * 200 + "1" + "}" * 200,
+)  # fmt: skip
+"""What is put in the place of a setting, all of it valid TOML."""
+
+
+def spoil_values(data: bytes, steps) -> bytes:
+    """Settings with some values replaced by others, one a mutation."""
+    lines = data.decode().split("\n")
+    keys = [index for index, line in enumerate(lines) if " = " in line]
+    for step in steps:
+        index = keys[len(keys) * step.place // 10**6]
+        key = lines[index].split(" = ")[0]
+        lines[index] = f"{key} = {VALUES[len(VALUES) * step.other // 10**6]}"
+    return "\n".join(lines).encode()
+
+
+NUMBERS = (
+    "0", "1", "3", "50", "500", "1e3", "1e4", "1e6", "1e9", "1e30", "1e154", "1e308", "1e-2",
+    "1e-4", "1e-9", "1e-30", "1e-160", "1e-308", "-1", "-400", "-1e4", "-1e308",
+)  # fmt: skip
+"""What is put in the place of a number of the settings for a whole run."""
+
+
+def spoil_numbers(data: bytes, steps) -> bytes:
+    """Settings with some numbers replaced by others, one a mutation."""
+    lines = data.decode().split("\n")
+    keys = [index for index, line in enumerate(lines) if re.search(r" = [-0-9.]+$", line)]
+    for step in steps:
+        index = keys[len(keys) * step.place // 10**6]
+        key = lines[index].split(" = ")[0]
+        lines[index] = f"{key} = {NUMBERS[len(NUMBERS) * step.other // 10**6]}"
+    return "\n".join(lines).encode()
+
+
 def _spoil_once(data: bytes, step: Mutation) -> bytes:
     kind, place, other, piece = step
     at, stop = sorted((len(data) * place // 10**6, len(data) * other // 10**6))
@@ -105,5 +148,5 @@ def _spoil_lines(data: bytes, step: Mutation) -> bytes:
     elif step.kind == "rotate lines":
         lines = lines[first:] + lines[:first]
     else:
-        lines[first] += (step.piece or b" ") * 11_000
+        lines[first] += (step.piece[:3] or b" ") * 11_000
     return b"\n".join(lines)

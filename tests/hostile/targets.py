@@ -2,30 +2,37 @@
 
 from __future__ import annotations
 
+import atexit
 import json
+import shutil
 import signal
+import tempfile
 import unicodedata
 from collections.abc import Callable
 from contextlib import contextmanager
+from functools import cache
 from pathlib import Path
 from typing import NamedTuple
 
 import numpy as np
 import shapely
 
+from fieldgen.chain import make_fields
 from fieldgen.comparing.observations import LIMITS, read_truth
 from fieldgen.errors import FieldgenError
 from fieldgen.products.maps.geometries import clip_outlines, read_geometries
 from fieldgen.quantities import QUANTITIES
 from fieldgen.readers.epochs import YEARS
 from fieldgen.readers.formats import read_delays, read_weather
+from fieldgen.readers.network import read_network
 from fieldgen.readers.records import Rejections
 from fieldgen.readers.tables import read_station_table
 from fieldgen.settings import read_settings
+from tests.hostile.mutations import spoil, spoil_numbers, spoil_values
 from tests.readers.fixtures import OLD_DIALECT, SinexFile, rinex_header, rinex_record
-from tests.scene import SETTINGS
+from tests.scene import SETTINGS, write_scene
 
-SECONDS = 5.0
+SECONDS = 20.0
 """No small file may take longer than this to read."""
 
 FIRST, LAST = (np.datetime64(f"{year}-01-01", "s") for year in (YEARS[0], YEARS[-1] + 1))
@@ -35,12 +42,18 @@ LOWEST, HIGHEST = -500.0, 9000.0
 
 
 class Target(NamedTuple):
-    """A reader, a valid file for it, and the check of what it returns."""
+    """A reader, a valid file for it, and the check of what it returns.
+
+    cost : time that a file takes, against the quick ones
+    spoil : how the file is spoilt by mutations
+    """
 
     name: str
     seed: bytes
     read: Callable
     check: Callable
+    cost: int = 1
+    spoil: Callable = spoil
 
 
 @contextmanager
@@ -174,6 +187,39 @@ def read_and_name(read):
     return lambda path: read(path, name="file")
 
 
+@cache
+def scene() -> Path:
+    """Folder of a small scene with a coast; it is removed when the process ends."""
+    folder = Path(tempfile.mkdtemp(prefix="scene"))
+    atexit.register(shutil.rmtree, folder)
+    write_scene(folder, hours=3)
+    (folder / "coast.json").write_text(COAST)
+    return folder
+
+
+def run_settings(path: Path):
+    """Fields of the scene with other settings."""
+    changed = scene() / "changed.toml"
+    shutil.copy(path, changed)
+    return make_fields(read_network(changed))
+
+
+def run_delays(path: Path):
+    """Fields of the scene with other delays."""
+    shutil.copy(path, scene() / "delays_changed.csv")
+    changed = scene() / "delays.toml"
+    changed.write_text(SETTINGS.replace("delays.csv", "delays_changed.csv"))
+    return make_fields(read_network(changed))
+
+
+def check_run(fields) -> None:
+    """What users of a field may rely on."""
+    gap = (fields.flag.values & 4) > 0
+    assert (np.isnan(fields.pwv.values) == gap).all()
+    assert (fields.pwv.values[~gap] >= 0.0).all()
+    assert (fields.pwv_sigma.values[~gap] > 0.0).all()
+
+
 RINEX = rinex_header() + "".join(
     rinex_record(f" 30  1 31 {hour:2d}  0  0", [1005.1 - hour, 12.5, 70.0]) for hour in range(6)
 )
@@ -239,7 +285,7 @@ common_sigma = 0.2
 jump = 8.0
 condemn_share = 0.5
 [heights]
-reference_height = 200.0
+reference_height = 800.0
 scale_height = 2000
 prior_sigma = 400.0
 [kriging]
@@ -248,6 +294,37 @@ window = "48h"
 partial_sill = 4.0
 range = 80
 nugget = 0.1
+far_distance = 50
+"""
+)
+
+SCENE_DELAYS = (scene() / "delays.csv").read_bytes()
+
+FITTED_SETTINGS = (
+    SETTINGS
+    + """[retrieval]
+ztd_sigma_scale = 1.5
+ztd_sigma_floor = 0.004
+common_sigma = 0.2
+barometer_sigma = 0.3
+barometer_distance = 1.0
+[screening]
+formal_error = 0.010
+formal_error_ratio = 2.5
+spike = 0.030
+jump = 8.0
+neighbour_ratio = 4.0
+neighbour_difference = 2.5
+bias_ratio = 2.0
+condemn_share = 0.5
+pressure_difference = 4.0
+terrain_difference = 150
+[heights]
+prior = 2000
+prior_sigma = 400.0
+[kriging]
+drift = "linear"
+window = "48h"
 far_distance = 50
 """
 )
@@ -269,4 +346,14 @@ TARGETS = [
     Target("soundings", SOUNDING_CSV.encode(), read_truth, check_truth),
     Target("lines", COAST.encode(), read_geometries, check_geometries),
     Target("settings", FULL_SETTINGS.encode(), read_settings, check_settings),
+    Target(
+        "settings values",
+        FULL_SETTINGS.encode(),
+        read_settings,
+        check_settings,
+        spoil=spoil_values,
+    ),
+    Target("run as set", FULL_SETTINGS.encode(), run_settings, check_run, 50, spoil_numbers),
+    Target("run fitted", FITTED_SETTINGS.encode(), run_settings, check_run, 50, spoil_numbers),
+    Target("run of delays", SCENE_DELAYS, run_delays, check_run, 50),
 ]
