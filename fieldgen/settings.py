@@ -33,8 +33,9 @@ from fieldgen.plain_text import one_line
 LONGEST_TEXT = 4000
 """Longest text [characters] of a setting; a CRS in WKT may need it."""
 
-LARGEST_FILE = 1_000_000
-"""Largest settings file [bytes]; a hand-written one has a few thousand."""
+LARGEST_FILE, LONGEST_LINE = 100_000, 8000
+"""Largest settings file [bytes] and its longest line [characters]; a hand-written file has a few
+thousand. Keys with thousands of dots take TOML readers hours."""
 
 PROBLEMS_SHOWN = 30
 """Further problems are counted."""
@@ -43,7 +44,7 @@ LONGEST_SHOWN = 80
 """Characters of a value or key that a message repeats."""
 
 MOST_CELLS = 25_000_000
-"""Cells of a grid; a process needs about 600 bytes for each."""
+"""Cells of a grid; a process that makes a day of hours needs about 300 bytes for each, 8 GB in all."""
 
 _KEY = re.compile(r"[a-z_]+")
 """A key of the settings, unlike the library's names for the branches of a choice."""
@@ -112,8 +113,11 @@ FilePath = Annotated[Path, AfterValidator(_check_path)]
 Pattern = Annotated[str, AfterValidator(_check_path_text)]
 Duration = Annotated[timedelta, BeforeValidator(parse_duration)]
 TimeStep = Annotated[Duration, AfterValidator(_check_divides_day)]
-Positive = Annotated[float, Field(gt=0)]
-NotNegative = Annotated[float, Field(ge=0)]
+Positive = Annotated[float, Field(ge=1e-6, le=1e6)]
+"""Sizes of any unit here: beyond them sums overflow or vanish, and nothing real lies there."""
+
+NotNegative = Annotated[float, Field(ge=0, le=1e6)]
+Limit = Annotated[float, Field(ge=-100, le=1000)]
 
 
 class _Table(BaseModel):
@@ -139,7 +143,7 @@ class GridTable(_Table):
     south: float | None = None
     east: float | None = None
     north: float | None = None
-    spacing: Positive | None = None
+    spacing: Annotated[float, Field(gt=0)] | None = None
     like: FilePath | None = None
 
     @model_validator(mode="after")
@@ -184,8 +188,8 @@ class TerrainTable(_Table):
     """``[terrain]``: orthometric heights finer than the grid, and the geoid."""
 
     file: FilePath
-    geoid: float | FilePath | None = None
-    lowest_land: float = 0.0
+    geoid: Annotated[float, Field(ge=-110, le=90)] | FilePath | None = None
+    lowest_land: Annotated[float, Field(ge=-12000, le=9000)] = 0.0
 
 
 class RetrievalTable(_Table):
@@ -215,8 +219,8 @@ class RetrievalTable(_Table):
 class MeanTemperatureTable(_Table):
     """``retrieval.mean_temperature`` as coefficients: Tm = intercept + slope Ts."""
 
-    intercept: float
-    slope: float
+    intercept: Annotated[float, Field(ge=-300, le=300)]
+    slope: Annotated[float, Field(ge=-3, le=3)]
     rms: Positive
 
 
@@ -276,7 +280,7 @@ class ProductsTable(_Table):
     """``[products]``: what is drawn, and the lines drawn on it."""
 
     maps: Literal["all", "latest", "none"] = "all"
-    limits: Annotated[tuple[float, float], AfterValidator(_check_ascending)] | Literal["auto"] = (
+    limits: Annotated[tuple[Limit, Limit], AfterValidator(_check_ascending)] | Literal["auto"] = (
         "auto"
     )
     coast: FilePath | None = None
@@ -337,7 +341,10 @@ def _read_small_file(path: Path) -> str:
     check_is_file(path)
     if path.stat().st_size > LARGEST_FILE:
         raise OSError(f"it has more than {LARGEST_FILE} bytes")
-    return path.read_bytes().decode()
+    text = path.read_bytes().decode()
+    if max(map(len, text.splitlines()), default=0) > LONGEST_LINE:
+        raise OSError(f"it has a line of more than {LONGEST_LINE} characters")
+    return text
 
 
 def _shortened(text: str, length: int = LONGEST_SHOWN) -> str:

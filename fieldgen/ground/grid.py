@@ -73,9 +73,7 @@ def read_crs(text: str, where: str) -> pyproj.CRS:
     try:
         crs = pyproj.CRS.from_user_input(text)
     except (pyproj.exceptions.CRSError, ValueError, TypeError):
-        raise GridError(
-            f'{where}: is {shown}, expected a CRS such as "EPSG:32626".'
-        ) from None
+        raise GridError(f'{where}: is {shown}, expected a CRS such as "EPSG:32626".') from None
     if not (crs.is_projected or crs.is_geographic):
         raise GridError(f"{where}: is {shown}, expected a projected or geographic CRS.")
     return crs

@@ -13,6 +13,9 @@ EXAMPLES_KEPT = 5
 """Rejected lines named one by one for each file and reason; the others are only counted."""
 
 
+LONGEST_DETAIL = 200
+"""Characters that a message repeats of a line."""
+
 NO_TIME = np.datetime64("NaT", "s")
 
 
@@ -36,7 +39,7 @@ class LineError(ValueError):
     def __init__(self, reason: str, detail: str = ""):
         super().__init__(reason)
         self.reason = reason
-        self.detail = detail
+        self.detail = detail[:LONGEST_DETAIL]
 
 
 @dataclass

@@ -12,7 +12,7 @@ from fieldgen.plain_text import one_line
 from fieldgen.readers.assembly import WEATHER_VALUES, Rows, weather_records
 from fieldgen.readers.epochs import calendar_epoch
 from fieldgen.readers.positions import check_height, geodetic_position, is_on_the_ground
-from fieldgen.readers.records import LineError, Rejections, Site, WeatherRecords
+from fieldgen.readers.records import LONGEST_DETAIL, LineError, Rejections, Site, WeatherRecords
 from fieldgen.readers.text import file_stem, read_lines
 
 LABEL_COLUMN = 60
@@ -246,7 +246,9 @@ class _Reading:
                 self.header.check()
                 self._end_header(self.header)
         except ValueError as error:
-            raise InputError(f"{self.file}, line {number}: {error}.") from None
+            raise InputError(
+                f"{self.file}, line {number}: {str(error)[:LONGEST_DETAIL]}."
+            ) from None
 
     def _end_header(self, header: Header) -> None:
         self.in_header = False

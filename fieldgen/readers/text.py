@@ -24,7 +24,7 @@ LONGEST_LINE = 10_000
 CHUNK_BYTES = 1 << 22
 """Size of a block [bytes]: about 50 000 lines."""
 
-MOST_UNPACKED, UNPACKED_FREELY = 200, 1 << 26
+MOST_UNPACKED, UNPACKED_FREELY = 100, 1 << 24
 """A file may unpack to this many times its size, or to this size [bytes] if that is more."""
 
 GZIP_MAGIC = b"\x1f\x8b"
@@ -86,7 +86,7 @@ def _check_compression(start: bytes, name: str) -> None:
 
 
 def read_chunks(path, name: str, size: int = CHUNK_BYTES) -> Iterator[Chunk]:
-    """The file as chunks of about `size` bytes, cut between lines."""
+    """The file as chunks of about `size` bytes, cut between lines; blank ones are left out."""
     line, taken = 1, 0
     with open_bytes(path, name) as stream:
         rest = stream.read(len(UTF8_MARK)).removeprefix(UTF8_MARK)
@@ -96,7 +96,8 @@ def read_chunks(path, name: str, size: int = CHUNK_BYTES) -> Iterator[Chunk]:
             whole, newline, rest = (rest + block).rpartition(b"\n")
             rest = rest[: LONGEST_LINE + 1]
             if newline:
-                yield Chunk(whole + newline, line)
+                if whole.strip():
+                    yield Chunk(whole + newline, line)
                 line += whole.count(b"\n") + 1
         if rest:
             yield Chunk(rest, line)
@@ -127,9 +128,11 @@ def read_lines(path, name: str, rejections: Rejections) -> Iterator[tuple[int, s
     for chunk in read_chunks(path, name):
         lines = chunk.data.removesuffix(b"\n").split(b"\n")
         for number, line in enumerate(lines, chunk.first_line):
+            if not line:
+                continue
             if len(line) > LONGEST_LINE:
                 reject_long_line(rejections, name, number)
-            elif line:
+            else:
                 yield number, decode(line).rstrip("\r")
 
 
