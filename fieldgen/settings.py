@@ -44,7 +44,7 @@ LONGEST_SHOWN = 80
 """Characters of a value or key that a message repeats."""
 
 MOST_CELLS = 25_000_000
-"""Cells of a grid; a process that makes a day of hours needs about 300 bytes for each, 8 GB in all."""
+"""Cells of a grid; a process that makes a day of 24 steps needs about 300 bytes for each, 8 GB."""
 
 _KEY = re.compile(r"[a-z_]+")
 """A key of the settings, unlike the library's names for the branches of a choice."""

@@ -165,8 +165,8 @@ def _time_grid(settings: Settings, delays: list[DelayRecords], stations: int) ->
         last = max(delays, key=lambda records: records.time.max())
         raise InputError(
             f"stations.delays: {stations} stations report from {first.time.min()} ({first.file}) "
-            f"to {last.time.max()} ({last.file}), expected at most {MOST_VALUES} values at steps of "
-            "network.time_step. Name fewer files, or take out a record of a wrong year."
+            f"to {last.time.max()} ({last.file}), expected at most {MOST_VALUES} values at steps "
+            "of network.time_step. Name fewer files, or take out a record of a wrong year."
         )
     return time
 

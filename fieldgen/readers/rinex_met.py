@@ -246,9 +246,8 @@ class _Reading:
                 self.header.check()
                 self._end_header(self.header)
         except ValueError as error:
-            raise InputError(
-                f"{self.file}, line {number}: {str(error)[:LONGEST_DETAIL]}."
-            ) from None
+            detail = str(error)[:LONGEST_DETAIL]
+            raise InputError(f"{self.file}, line {number}: {detail}.") from None
 
     def _end_header(self, header: Header) -> None:
         self.in_header = False

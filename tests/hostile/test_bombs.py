@@ -76,7 +76,7 @@ FILLS = {"blanks": b" " * MEGABYTE, "line feeds": b"\n" * MEGABYTE, "one line": 
 @pytest.mark.parametrize("fill", FILLS.values(), ids=FILLS)
 @pytest.mark.parametrize("head", HEADS)
 def test_gzip_bombs_are_refused(tmp_path, head, fill):
-    """A limit: half a megabyte that would unpack to half a gigabyte is given up after its first megabytes."""
+    """A limit: what would unpack to half a gigabyte is given up early, whatever fills it."""
     path = tmp_path / "bomb.gz"
     path.write_bytes(gzip.compress(HEADS[head].encode()) + 512 * gzip.compress(fill))
     assert path.stat().st_size < 3 * MEGABYTE / 4

@@ -33,7 +33,7 @@ def read(folder, *changes):
         ("west = 320000", 'west = "' + "x" * 4500 + '"', r"grid.west: is 'x{80}\.\.\.'"),
         ("geoid = 57.0", "geoid = 1e6", "terrain.geoid"),
         ("geoid = 57.0", "geoid = 1979-05-27", "terrain.geoid"),
-        ('file = "terrain.tif"', 'file = "a\\u0000b"', "terrain.file: .*without control characters"),
+        ('file = "terrain.tif"', 'file = "a\\u0000b"', "terrain.file: .*control characters"),
         ('delays = ["delays.csv"]', 'delays = ["\\u001b[31m"]', r"delays.0: is '\\x1b\[31m'"),
         ('maps = "none"', "limits = [0, 1e308]", "products.limits"),
         ('maps = "none"', '"\\u001b[31m" = 1', r"products.'\\x1b\[31m': unknown key"),

@@ -15,8 +15,8 @@ from tests.readers.fixtures import SinexFile
 from tests.scene import SETTINGS, write_scene
 
 HOSTILE = (
-    "<script>alert(1)</script>", "=HYPERLINK(1)", "+1", "-1+1", "@SUM(A1)", "$\\frac{$", "../../etc/x",
-    "%s{0}{}", "[red]x[/red]", "A" * 40, "Ænïgmå Йж 北",
+    "<script>alert(1)</script>", "=HYPERLINK(1)", "+1", "-1+1", "@SUM(A1)", "$\\frac{$",
+    "../../etc/x",    "%s{0}{}", "[red]x[/red]", "A" * 40, "Ænïgmå Йж 北",
 )  # fmt: skip
 """Names that are legal, and that no product may act upon."""
 
