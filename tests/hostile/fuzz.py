@@ -18,7 +18,7 @@ from pathlib import Path
 sys.path.insert(0, str(Path(__file__).parents[2]))
 
 from tests.hostile.mutations import KINDS, PIECES, Mutation
-from tests.hostile.targets import TARGETS, Target, try_file
+from tests.hostile.targets import TARGETS, Target, TooSlow, try_file
 
 BATCH = 200
 
@@ -43,7 +43,7 @@ def fuzz(target: Target, path: Path, dice: random.Random, count: Counter, faults
     count[target.name, "cases"] += 1
     try:
         count[target.name, "read"] += try_file(target, path)
-    except Exception as error:
+    except (Exception, TooSlow) as error:
         last = traceback.extract_tb(error.__traceback__)[-1]
         where = f"{target.name}: {type(error).__name__} in {last.filename}:{last.lineno}"
         count[target.name, "faulty"] += 1
