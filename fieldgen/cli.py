@@ -12,6 +12,7 @@ import os
 import sys
 
 from fieldgen.commands import check, compare, make, score, status, update
+from fieldgen.commands.terminal import show
 from fieldgen.errors import FieldgenError
 
 COMMANDS = (make, update, status, check, score, compare)
@@ -32,7 +33,7 @@ def main(arguments: list[str] | None = None) -> int:
     try:
         return options.run(options)
     except FieldgenError as error:
-        print(f"fieldgen: {error}", file=sys.stderr)
+        show(f"fieldgen: {error}", sys.stderr)
         return error.exit_status
     except KeyboardInterrupt:
         print("fieldgen: interrupted; files already written are whole.", file=sys.stderr)

@@ -6,6 +6,8 @@ import json
 from datetime import UTC, datetime
 from typing import TextIO
 
+from fieldgen.plain_text import printable
+
 EVENTS = {
     "update_begun": "update of {folder} from {network}",
     "nothing_new": "nothing new: all {days} days stand",
@@ -47,5 +49,5 @@ class Log:
             about = {"time": time, "level": level, "event": event, "message": message}
             line = json.dumps(about | fields)
         else:
-            line = f"{time} {level:7} {message}"
+            line = f"{time} {level:7} {printable(message)}"
         print(line, file=self._stream, flush=True)

@@ -25,11 +25,32 @@ from pydantic import (
 
 from fieldgen.constants import MEAN_TEMPERATURE, REFRACTIVITY, MeanTemperature
 from fieldgen.errors import SettingsError
+from fieldgen.input_files import check_is_file
 from fieldgen.kriging.covariance import MODELS
 from fieldgen.kriging.fitting import AUTO
+from fieldgen.plain_text import one_line
+
+LONGEST_TEXT = 4000
+"""Longest text [characters] of a setting; a CRS in WKT may need it."""
+
+LARGEST_FILE, LONGEST_LINE = 100_000, 8000
+"""Largest settings file [bytes] and its longest line [characters]; a hand-written file has a few
+thousand. Keys with thousands of dots take TOML readers hours."""
+
+PROBLEMS_SHOWN = 30
+"""Further problems are counted."""
+
+LONGEST_SHOWN = 80
+"""Characters of a value or key that a message repeats."""
+
+MOST_CELLS = 25_000_000
+"""Cells of a grid; a process that makes a day of 24 steps needs about 300 bytes for each, 8 GB."""
 
 _KEY = re.compile(r"[a-z_]+")
 """A key of the settings, unlike the library's names for the branches of a choice."""
+
+_COUNT = re.compile(r"0{0,9}[1-9][0-9]{0,5}")
+"""A number of units of time, up to six digits."""
 
 _DURATION_UNITS = {"min": "minutes", "h": "hours", "d": "days"}
 
@@ -38,7 +59,7 @@ def parse_duration(text: str) -> timedelta:
     """Duration from text such as ``15min``, ``1h`` or ``2d``; raises ValueError."""
     for suffix, unit in _DURATION_UNITS.items():
         number = str(text).removesuffix(suffix)
-        if number != text and number.isdigit() and int(number) > 0:
+        if number != text and _COUNT.fullmatch(number):
             return timedelta(**{unit: int(number)})
     raise ValueError('expected a whole number and a unit, such as "15min", "1h" or "2d"')
 
@@ -66,10 +87,37 @@ def _name_of(family):
     return AfterValidator(check)
 
 
+def _check_name(text: str) -> str:
+    if not one_line(text):
+        raise ValueError("expected letters that can be seen")
+    return text
+
+
+def _check_path(path: Path) -> Path:
+    _check_path_text(str(path))
+    return path
+
+
+def _check_path_text(text: str) -> str:
+    if not text or any(ord(letter) < 32 for letter in text):
+        raise ValueError("expected the name of a file, without control characters")
+    if len(text) > LONGEST_TEXT:
+        raise ValueError(f"expected at most {LONGEST_TEXT} characters")
+    return text
+
+
+Text = Annotated[str, Field(max_length=LONGEST_TEXT), AfterValidator(one_line)]
+"""Words for the metadata; line feeds and control characters become blanks."""
+
+FilePath = Annotated[Path, AfterValidator(_check_path)]
+Pattern = Annotated[str, AfterValidator(_check_path_text)]
 Duration = Annotated[timedelta, BeforeValidator(parse_duration)]
 TimeStep = Annotated[Duration, AfterValidator(_check_divides_day)]
-Positive = Annotated[float, Field(gt=0)]
-NotNegative = Annotated[float, Field(ge=0)]
+Positive = Annotated[float, Field(ge=1e-6, le=1e6)]
+"""Sizes of any unit here: beyond them sums overflow or vanish, and nothing real lies there."""
+
+NotNegative = Annotated[float, Field(ge=0, le=1e6)]
+Limit = Annotated[float, Field(ge=-100, le=1000)]
 
 
 class _Table(BaseModel):
@@ -79,24 +127,24 @@ class _Table(BaseModel):
 class NetworkTable(_Table):
     """``[network]``: its name, the step of its products, and who stands behind them."""
 
-    name: str = Field("network", min_length=1, max_length=120)
+    name: Annotated[Text, AfterValidator(_check_name)] = Field("network", max_length=120)
     time_step: TimeStep = timedelta(hours=1)
-    institution: str = ""
-    url: str = ""
-    email: str = ""
-    license: str = "not stated; ask the network's operator"
+    institution: Text = ""
+    url: Text = ""
+    email: Text = ""
+    license: Text = "not stated; ask the network's operator"
 
 
 class GridTable(_Table):
     """``[grid]``: the outer cell edges in units of the CRS, or a file whose grid is taken over."""
 
-    crs: str | None = None
+    crs: Annotated[str, Field(max_length=LONGEST_TEXT)] | None = None
     west: float | None = None
     south: float | None = None
     east: float | None = None
     north: float | None = None
-    spacing: Positive | None = None
-    like: Path | None = None
+    spacing: Annotated[float, Field(gt=0)] | None = None
+    like: FilePath | None = None
 
     @model_validator(mode="after")
     def _check_complete(self):
@@ -113,28 +161,36 @@ class GridTable(_Table):
             raise ValueError("expected west < east and south < north")
         for low, high in (("west", "east"), ("south", "north")):
             cells = (getattr(self, high) - getattr(self, low)) / self.spacing
+            if not cells <= MOST_CELLS:
+                raise ValueError(
+                    f"expected at most {MOST_CELLS} cells; {high} - {low} alone is {cells:.3g} "
+                    "spacings"
+                )
             if abs(cells - round(cells)) > 1e-6 or round(cells) < 2:
                 raise ValueError(
                     f"expected {high} - {low} to be two or more whole spacings; it is {cells:g}"
                 )
+        cells = (self.east - self.west) / self.spacing * (self.north - self.south) / self.spacing
+        if cells > MOST_CELLS:
+            raise ValueError(f"expected at most {MOST_CELLS} cells; they are {cells:.3g}")
         return self
 
 
 class StationsTable(_Table):
     """``[stations]``: the input files, as glob patterns."""
 
-    delays: list[str] = Field(min_length=1)
-    weather: list[str] = []
-    table: Path | None = None
+    delays: list[Pattern] = Field(min_length=1)
+    weather: list[Pattern] = []
+    table: FilePath | None = None
     pressure_unit: Literal["hPa", "0.1 hPa", "Pa"] = "hPa"
 
 
 class TerrainTable(_Table):
     """``[terrain]``: orthometric heights finer than the grid, and the geoid."""
 
-    file: Path
-    geoid: float | Path | None = None
-    lowest_land: float = 0.0
+    file: FilePath
+    geoid: Annotated[float, Field(ge=-110, le=90)] | FilePath | None = None
+    lowest_land: Annotated[float, Field(ge=-12000, le=9000)] = 0.0
 
 
 class RetrievalTable(_Table):
@@ -164,8 +220,8 @@ class RetrievalTable(_Table):
 class MeanTemperatureTable(_Table):
     """``retrieval.mean_temperature`` as coefficients: Tm = intercept + slope Ts."""
 
-    intercept: float
-    slope: float
+    intercept: Annotated[float, Field(ge=-300, le=300)]
+    slope: Annotated[float, Field(ge=-3, le=3)]
     rms: Positive
 
 
@@ -225,12 +281,12 @@ class ProductsTable(_Table):
     """``[products]``: what is drawn, and the lines drawn on it."""
 
     maps: Literal["all", "latest", "none"] = "all"
-    limits: Annotated[tuple[float, float], AfterValidator(_check_ascending)] | Literal["auto"] = (
+    limits: Annotated[tuple[Limit, Limit], AfterValidator(_check_ascending)] | Literal["auto"] = (
         "auto"
     )
-    coast: Path | None = None
-    rivers: Path | None = None
-    catchments: Path | None = None
+    coast: FilePath | None = None
+    rivers: FilePath | None = None
+    catchments: FilePath | None = None
 
     @property
     def lines(self) -> dict[str, Path]:
@@ -270,29 +326,58 @@ def read_settings(path: str | Path) -> Settings:
     try:
         return Settings(folder=path.resolve().parent, **content)
     except ValidationError as error:
-        problems = "\n".join(f"  {_format_problem(item)}" for item in error.errors())
-        raise SettingsError(f"{path}: the settings cannot be used:\n{problems}") from None
+        found = error.errors(include_url=False, include_context=False)
+        problems = [_format_problem(item) for item in found[:PROBLEMS_SHOWN]]
+        if len(found) > PROBLEMS_SHOWN:
+            problems.append(f"and {len(found) - PROBLEMS_SHOWN} more")
+        lines = "\n".join(f"  {problem}" for problem in problems)
+        raise SettingsError(f"{path}: the settings cannot be used:\n{lines}") from None
 
 
 def _read_toml(path: Path) -> dict:
     try:
-        with path.open("rb") as file:
-            return tomllib.load(file)
+        return tomllib.loads(_read_small_file(path))
     except OSError as error:
-        raise SettingsError(f"{path}: cannot be read: {error.strerror}.") from None
-    except (tomllib.TOMLDecodeError, UnicodeDecodeError, RecursionError) as error:
-        raise SettingsError(f"{path}: is not valid TOML: {error or 'nested too deeply'}.") from None
+        raise SettingsError(f"{path}: cannot be read: {error.strerror or error}.") from None
+    except RecursionError:
+        raise SettingsError(f"{path}: is not valid TOML: nested too deeply.") from None
+    except ValueError as error:  # of the syntax, the encoding, or a number of thousands of digits
+        raise SettingsError(f"{path}: is not valid TOML: {_shortened(str(error))}.") from None
+
+
+def _read_small_file(path: Path) -> str:
+    check_is_file(path)
+    if path.stat().st_size > LARGEST_FILE:
+        raise OSError(f"it has more than {LARGEST_FILE} bytes")
+    text = path.read_bytes().decode()
+    if max(map(len, text.splitlines()), default=0) > LONGEST_LINE:
+        raise OSError(f"it has a line of more than {LONGEST_LINE} characters")
+    return text
+
+
+def _shortened(text: str, length: int = LONGEST_SHOWN) -> str:
+    return text if len(text) <= length else f"{text[:length]}..."
 
 
 def _format_problem(problem: dict) -> str:
     """One line for one problem: the key's path, its value and the rule."""
     parts = [str(part) for part in problem["loc"]]
-    key = ".".join(part for part in parts if part.isdigit() or _KEY.fullmatch(part))
     if problem["type"] == "extra_forbidden":
+        key = ".".join(_shortened(part) if _KEY.fullmatch(part) else _shown(part) for part in parts)
         return f"{key}: unknown key"
+    key = ".".join(part for part in parts if part.isdigit() or _KEY.fullmatch(part))
     if problem["type"] == "missing":
         return f"{key}: is missing"
     rule = problem["msg"].removeprefix("Value error, ")
     value = problem["input"]
-    shown = f"is {value!r}, " if isinstance(value, str | int | float | bool) else ""
+    shown = f"is {_shown(value)}, " if isinstance(value, str | int | float | bool) else ""
     return f"{key}: {shown}{rule[0].lower()}{rule[1:]}"
+
+
+def _shown(value) -> str:
+    """A value as a message shows it, shortened."""
+    if isinstance(value, str):
+        return repr(_shortened(value))
+    if isinstance(value, int) and abs(value) > 10**LONGEST_SHOWN:
+        return "a number of many digits"
+    return repr(value)

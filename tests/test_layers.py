@@ -12,7 +12,7 @@ import fieldgen
 ROOT = Path(fieldgen.__file__).parent
 
 LAYERS = [
-    ["errors", "constants", "quantities", "memory", "processes"],
+    ["errors", "constants", "quantities", "memory", "input_files", "plain_text", "processes"],
     ["kriging", "station"],
     ["settings"],
     ["ground"],

@@ -8,6 +8,7 @@ from datetime import timedelta
 from pathlib import Path
 
 from fieldgen.errors import OutputError
+from fieldgen.plain_text import file_name
 
 
 def add_command(commands, name: str, help_text: str, example: str, run) -> argparse.ArgumentParser:
@@ -80,8 +81,7 @@ def product_folder(options: argparse.Namespace, settings) -> Path:
 
 def folder_name(name: str) -> str:
     """Name of a folder made from the network's name: nothing in it can leave `outputs`."""
-    kept = "".join(letter if letter.isalnum() or letter in "-_ ." else "_" for letter in name)
-    return kept.strip(" .") or "network"
+    return file_name(name, "network")
 
 
 def check_writable(folder: Path) -> Path:

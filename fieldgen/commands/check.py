@@ -5,6 +5,7 @@ from __future__ import annotations
 import argparse
 
 from fieldgen.commands.arguments import add_command, add_network
+from fieldgen.commands.terminal import show
 
 
 def add(commands) -> None:
@@ -28,5 +29,5 @@ def _run(options: argparse.Namespace) -> int:
     with Progress() as progress:
         network = read_network(options.network, progress.reading)
         stations = retrieve_water_vapour(network)
-    print(format_check(network, stations))
+    show(format_check(network, stations))
     return 0

@@ -6,6 +6,7 @@ import argparse
 from pathlib import Path
 
 from fieldgen.commands.arguments import add_command, check_writable
+from fieldgen.commands.terminal import show
 
 
 def add(commands) -> None:
@@ -36,8 +37,8 @@ def _run(options: argparse.Namespace) -> int:
     if options.out is not None:
         check_writable(options.out)
     comparison = compare(options.fields, options.observations)
-    print(format_comparison(comparison))
+    show(format_comparison(comparison))
     if options.out is not None:
         paths = write_comparison(comparison, options.out)
-        print(f"{len(paths)} files written to {options.out}")
+        show(f"{len(paths)} files written to {options.out}")
     return 0

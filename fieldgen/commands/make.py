@@ -13,6 +13,7 @@ from fieldgen.commands.arguments import (
     check_writable,
     product_folder,
 )
+from fieldgen.commands.terminal import show
 
 
 def add(commands) -> None:
@@ -48,5 +49,5 @@ def _run(options: argparse.Namespace) -> int:
             jobs=options.jobs,
             progress=progress.made,
         )
-    print(format_run(run))
+    show(format_run(run))
     return 0

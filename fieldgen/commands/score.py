@@ -13,6 +13,7 @@ from fieldgen.commands.arguments import (
     check_writable,
     product_folder,
 )
+from fieldgen.commands.terminal import show
 
 
 def add(commands) -> None:
@@ -54,6 +55,6 @@ def _run(options: argparse.Namespace) -> int:
         report = report_score(network, score)
         paths = write_score(report, folder)
         write_picture(report, folder / "score.png")
-    print(format_score(report))
-    print(f"{len(paths) + 1} files written to {folder}")
+    show(format_score(report))
+    show(f"{len(paths) + 1} files written to {folder}")
     return 0

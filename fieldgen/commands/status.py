@@ -11,6 +11,7 @@ from fieldgen.commands.arguments import (
     duration,
     product_folder,
 )
+from fieldgen.commands.terminal import show
 
 ATTENTION = 4
 """Exit status when somebody should look."""
@@ -49,5 +50,5 @@ def _run(options: argparse.Namespace) -> int:
     folder = product_folder(options, read_settings(options.network))
     time = parse_time(options.at) if options.at else np.datetime64("now", "s")
     status = read_status(folder, time, most_age=options.max_age, most_missing=options.max_missing)
-    print(as_json(status) if options.json else format_status(status))
+    show(as_json(status) if options.json else format_status(status))
     return ATTENTION if status.problems else 0

@@ -8,6 +8,7 @@ from typing import NamedTuple
 import numpy as np
 
 from fieldgen.comparing.profile import Profile, specific_humidity
+from fieldgen.plain_text import one_line
 from fieldgen.quantities import QUANTITIES
 from fieldgen.readers.assembly import check_anything_usable
 from fieldgen.readers.positions import check_position
@@ -203,7 +204,7 @@ def _where(row: dict[str, str]) -> tuple[str, int, float, float]:
         place = check_position(longitude, latitude)
     except ValueError as error:
         raise LineError("impossible position", str(error)) from None
-    return row.get("station", ""), parse_time(row["time"]), *place
+    return one_line(row.get("station", "")), parse_time(row["time"]), *place
 
 
 def _number(row: dict[str, str], name: str) -> float:

@@ -13,6 +13,8 @@ import numpy as np
 import pyproj
 
 from fieldgen.errors import GridError
+from fieldgen.input_files import check_is_file
+from fieldgen.settings import MOST_CELLS
 
 
 @dataclass(frozen=True)
@@ -67,12 +69,13 @@ class Grid:
 
 def read_crs(text: str, where: str) -> pyproj.CRS:
     """CRS from a text that names it; raises GridError that names `where` it stands."""
+    shown = repr(text[:80])
     try:
         crs = pyproj.CRS.from_user_input(text)
-    except pyproj.exceptions.CRSError:
-        raise GridError(f'{where}: is {text!r}, expected a CRS such as "EPSG:32626".') from None
+    except (pyproj.exceptions.CRSError, ValueError, TypeError):
+        raise GridError(f'{where}: is {shown}, expected a CRS such as "EPSG:32626".') from None
     if not (crs.is_projected or crs.is_geographic):
-        raise GridError(f"{where}: is {text!r}, expected a projected or geographic CRS.")
+        raise GridError(f"{where}: is {shown}, expected a projected or geographic CRS.")
     return crs
 
 
@@ -84,13 +87,18 @@ def read_grid(path: Path) -> Grid:
     import xarray as xr
 
     try:
-        with xr.open_dataset(path) as dataset:
-            dataset = dataset.load()
-    except (OSError, ValueError) as error:
-        raise GridError(f"{path}: cannot be read as NetCDF: {error}") from None
-    x, dx = _axis(dataset, path, ("projection_x_coordinate", "longitude"), "x")
-    y, dy = _axis(dataset, path, ("projection_y_coordinate", "latitude"), "y")
-    return Grid(_file_crs(dataset, path), x, y, (dx, dy))
+        check_is_file(path)
+        with xr.open_dataset(path, decode_times=False) as dataset:
+            x, dx = _axis(dataset, path, ("projection_x_coordinate", "longitude"), "x")
+            y, dy = _axis(dataset, path, ("projection_y_coordinate", "latitude"), "y")
+            if len(x) * len(y) > MOST_CELLS:
+                raise GridError(
+                    f"{path}: cells are {len(x)} x {len(y)}, expected at most {MOST_CELLS}."
+                )
+            return Grid(_file_crs(dataset, path), x, y, (dx, dy))
+    except (OSError, ValueError, RuntimeError, LookupError, TypeError, AttributeError) as error:
+        reason = getattr(error, "strerror", None) or " ".join(str(error).split())[:200]
+        raise GridError(f"{path}: cannot be read as NetCDF: {reason}") from None
 
 
 def _axis(dataset, path: Path, standard_names, letter: str):
@@ -100,16 +108,19 @@ def _axis(dataset, path: Path, standard_names, letter: str):
         for variable in dataset.coords.values()
         if variable.ndim == 1 and variable.attrs.get("standard_name") in standard_names
     ]
-    found = [variable.values for variable in axes]
     units = [variable.attrs.get("units") for variable in axes]
-    if len(found) != 1:
+    if len(axes) != 1:
         raise GridError(
-            f"{path}: {len(found)} one-dimensional {letter} coordinates, expected one with "
+            f"{path}: {len(axes)} one-dimensional {letter} coordinates, expected one with "
             f"standard_name {' or '.join(standard_names)}."
         )
-    centres = np.sort(found[0].astype(float)) * (1000.0 if units == ["km"] else 1.0)
+    if axes[0].size > MOST_CELLS:
+        raise GridError(
+            f"{path}: {letter} has {axes[0].size} values, expected at most {MOST_CELLS}."
+        )
+    centres = np.sort(axes[0].values.astype(float)) * (1000.0 if units == ["km"] else 1.0)
     steps = np.diff(centres)
-    if len(steps) < 1 or not np.allclose(steps, steps.mean(), rtol=1e-3):
+    if len(steps) < 1 or not steps.min() > 0.0 or not np.allclose(steps, steps.mean(), rtol=1e-3):
         raise GridError(f"{path}: {letter} is not evenly spaced, expected cells of equal size.")
     return centres, float(steps.mean())
 

@@ -2,17 +2,20 @@
 
 from __future__ import annotations
 
+from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
 import rasterio
+from rasterio._err import CPLE_BaseError
 from rasterio.enums import Resampling
 from rasterio.transform import from_bounds
 from rasterio.warp import reproject, transform_bounds
 
 from fieldgen.errors import GridError, InputError
 from fieldgen.ground.grid import Grid
+from fieldgen.input_files import check_is_file
 
 MOST_POINTS = 4
 """Points along each side of a cell: 16 points describe its relief well enough for the mean of an
@@ -20,6 +23,13 @@ exponential, and more would only cost memory."""
 
 SEA_LEVEL = 0.0
 """Height [m] of the sea, and of what the raster leaves out."""
+
+
+HIGHEST_LAND = 9000.0
+"""No land [m] is higher; what is, stands for none and the file does not say so."""
+
+_RASTER_ERRORS = (OSError, rasterio.errors.RasterioError, CPLE_BaseError, ValueError, MemoryError)
+"""What reading a damaged or foreign raster may raise."""
 
 
 @dataclass(frozen=True)
@@ -46,12 +56,17 @@ def read_terrain(path: Path, grid: Grid, lowest_land: float = SEA_LEVEL) -> Terr
 
     Raises InputError if the file cannot be read, GridError if it does not cover the grid.
     """
-    with _open_raster(path, "terrain") as raster:
+    with _raster(path, "terrain") as raster:
         _check_covers(raster, path, grid)
         side = min(_pixels_per_cell(raster, grid), MOST_POINTS)
         fine = _resample(raster, grid, max(round(side), 1), finer=side >= 1)
     ny, nx = grid.shape
     side = len(fine) // ny
+    if not fine.max() <= HIGHEST_LAND:
+        raise InputError(
+            f"{path}: the terrain is {fine.max():.7g} m, expected at most {HIGHEST_LAND:g} m. Name "
+            "the value that stands for none in the file."
+        )
     points = fine.reshape(ny, side, nx, side).transpose(1, 3, 0, 2).reshape(-1, ny, nx)
     sea = points <= lowest_land
     return Terrain(np.where(sea, np.float32(SEA_LEVEL), points), sea.all(axis=0))
@@ -59,19 +74,24 @@ def read_terrain(path: Path, grid: Grid, lowest_land: float = SEA_LEVEL) -> Terr
 
 def read_raster_at(path: Path, longitude, latitude, what: str):
     """Values (n,) of a raster at points [degrees], bilinear; NaN outside it and near its gaps."""
-    with _open_raster(path, what) as raster:
+    with _raster(path, what) as raster:
         return _sample(raster, np.asarray(longitude), np.asarray(latitude))
 
 
-def _open_raster(path: Path, what: str):
+@contextmanager
+def _raster(path: Path, what: str):
+    """An open raster that has a CRS and a band; InputError where it cannot be read."""
     try:
-        raster = rasterio.open(path)
-    except rasterio.errors.RasterioIOError as error:
-        raise InputError(f"{path}: the {what} file cannot be read as a raster: {error}.") from None
-    if raster.crs is None:
-        raster.close()
-        raise InputError(f"{path}: the {what} file names no CRS. Write one into the file.")
-    return raster
+        check_is_file(path)
+        with rasterio.open(path) as raster:
+            if raster.crs is None:
+                raise InputError(f"{path}: the {what} file names no CRS. Write one into the file.")
+            if not raster.count:
+                raise InputError(f"{path}: the {what} file has no band, expected one of heights.")
+            yield raster
+    except _RASTER_ERRORS as error:
+        reason = getattr(error, "strerror", None) or " ".join(str(error).split())[:200]
+        raise InputError(f"{path}: the {what} file cannot be read as a raster: {reason}.") from None
 
 
 def _check_covers(raster, path: Path, grid: Grid) -> None:
@@ -122,9 +142,8 @@ def _resample(raster, grid: Grid, side: int, *, finer: bool):
 
 
 def _sample(raster, longitude, latitude):
-    """Bilinear values of band 1, read from the window that holds the points."""
+    """Bilinear values of band 1, read pixel by pixel: a raster may be larger than the memory."""
     import pyproj
-    from scipy.ndimage import map_coordinates
 
     to_raster = pyproj.Transformer.from_crs("EPSG:4326", raster.crs, always_xy=True)
     x, y = to_raster.transform(longitude, latitude)
@@ -138,11 +157,28 @@ def _sample(raster, longitude, latitude):
         & np.isfinite(row) & (row > -1) & (row < raster.height)
     )  # fmt: skip
     values = np.full(len(column), np.nan)
-    if inside.any():
-        band = raster.read(1, masked=True).astype(float).filled(np.nan)
-        if around_the_globe:  # the last column borders on the first
-            band = np.column_stack([band, band[:, 0]])
-        values[inside] = map_coordinates(
-            band, [row[inside], column[inside]], order=1, mode="nearest"
-        )
+    for index in np.flatnonzero(inside):
+        values[index] = _bilinear(raster, row[index], column[index], around_the_globe)
     return values
+
+
+def _bilinear(raster, row: float, column: float, around_the_globe: bool) -> float:
+    """Value between the four pixels around a place; at the edge the outermost ones count alone."""
+    rows, lower = _neighbours(row, raster.height)
+    columns, right = _neighbours(column, raster.width)
+    if around_the_globe and column > raster.width - 1:  # the last column borders on the first
+        columns, right = (raster.width - 1, 0), column - (raster.width - 1)
+    corners = np.array([[_pixel(raster, y, x) for x in columns] for y in rows])
+    return float(np.array([1.0 - lower, lower]) @ corners @ np.array([1.0 - right, right]))
+
+
+def _neighbours(place: float, count: int) -> tuple[tuple[int, int], float]:
+    """The two pixels around a place counted from the first centre, and the share of the second."""
+    place = min(max(place, 0.0), count - 1.0)
+    first = int(place)
+    return (first, min(first + 1, count - 1)), place - first
+
+
+def _pixel(raster, row: int, column: int) -> float:
+    window = rasterio.windows.Window(column, row, 1, 1)
+    return float(raster.read(1, window=window, masked=True).astype(float).filled(np.nan)[0, 0])

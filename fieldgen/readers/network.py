@@ -27,6 +27,10 @@ ODD_PRESSURE = 60.0
 """A median pressure this far [hPa] from the standard atmosphere's is reported: no weather does it
 for long, 500 m of height do."""
 
+MOST_VALUES = 40_000_000
+"""Steps times stations of a run: ten years of hours of 450 stations, or one of five minutes of 380.
+Each takes 32 bytes."""
+
 SPIKE_WINDOW = np.timedelta64(3600, "s")
 """Records are held against the median of their hour, however long a step is."""
 
@@ -74,7 +78,7 @@ def read_network(path: str | Path, progress: Callable[[str], None] = lambda file
             "no barometer: delays in metres cannot become water vapour. Name weather files in "
             "stations.weather."
         )
-    time = _time_grid(settings, delays)
+    time = _time_grid(settings, delays, stations.sizes["station"])
     gridded_weather = _grid_weather(weather, sites, time, report)
     _report_odd_pressures(gridded_weather, report)
     return Network(
@@ -194,9 +198,16 @@ def _read_table(settings: Settings, report: ReadingReport) -> dict[str, StationR
     return rows
 
 
-def _time_grid(settings: Settings, delays: Pool) -> TimeGrid:
+def _time_grid(settings: Settings, delays: Pool, stations: int) -> TimeGrid:
     step = np.timedelta64(int(settings.network.time_step.total_seconds()), "s")
-    return TimeGrid.around(np.unique(delays.time), step)
+    time = TimeGrid.around(np.unique(delays.time), step)
+    if (time.end - time.start) // step * stations > MOST_VALUES:
+        raise InputError(
+            f"stations.delays: {stations} stations report from {delays.time.min()} to "
+            f"{delays.time.max()}, expected at most {MOST_VALUES} values at steps of "
+            "network.time_step. Name fewer files, or take out a record of a wrong year."
+        )
+    return time
 
 
 def _grid_delays(

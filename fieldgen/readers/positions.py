@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from functools import cache
-from math import asin, cos, hypot, radians, sin, sqrt
+from math import asin, cos, hypot, isnan, radians, sin, sqrt
 from typing import NamedTuple
 
 from pyproj import Transformer
@@ -11,6 +11,13 @@ from pyproj import Transformer
 EARTH_RADIUS_KM = 6371.0
 GEOCENTRIC_RADII = (6.33e6, 6.40e6)
 """Distances [m] from the Earth's centre at which ground stations lie."""
+
+
+HEIGHTS = (-500.0, 9000.0)
+"""Heights [m] at which stations stand on Earth, above the ellipsoid or the sea."""
+
+UNDULATIONS = (-110.0, 90.0)
+"""Geoid heights [m] that occur on Earth: ellipsoidal minus mean-sea-level height."""
 
 
 class Geodetic(NamedTuple):
@@ -37,10 +44,20 @@ def check_position(longitude: float, latitude: float) -> tuple[float, float]:
     return wrap_longitude(longitude), latitude
 
 
+def check_height(height: float) -> float:
+    """The height [m], or NaN; ValueError if no station stands so high or low."""
+    low, high = HEIGHTS
+    if not (isnan(height) or low <= height <= high):
+        raise ValueError(f"height is {height:g} m, expected {low:g} to {high:g} m")
+    return height
+
+
 def is_on_the_ground(x: float, y: float, z: float) -> bool:
-    """Whether X, Y, Z [m] lie near the Earth's surface."""
+    """Whether X, Y, Z [m] lie where a station can stand."""
     low, high = GEOCENTRIC_RADII
-    return low <= hypot(x, y, z) <= high
+    if not low <= hypot(x, y, z) <= high:
+        return False
+    return HEIGHTS[0] <= geodetic_position(x, y, z).ellipsoidal_height <= HEIGHTS[1]
 
 
 def geodetic_position(x: float, y: float, z: float) -> Geodetic:

@@ -13,6 +13,9 @@ EXAMPLES_KEPT = 5
 """Rejected lines named one by one for each file and reason; the others are only counted."""
 
 
+LONGEST_DETAIL = 200
+"""Characters that a message repeats of a line."""
+
 NO_TIME = np.datetime64("NaT", "s")
 
 
@@ -36,7 +39,7 @@ class LineError(ValueError):
     def __init__(self, reason: str, detail: str = ""):
         super().__init__(reason)
         self.reason = reason
-        self.detail = detail
+        self.detail = detail[:LONGEST_DETAIL]
 
 
 @dataclass
@@ -120,7 +123,8 @@ class Records:
         """Hold the values in single precision, a ten-millionth of a delay, and what is absent not
         at all: a year of records must fit in memory."""
         index = self.places[1]
-        setattr(self, index, getattr(self, index).astype(np.int16))
+        narrow = np.int16 if len(self.identifiers) <= np.iinfo(np.int16).max else np.int32
+        setattr(self, index, getattr(self, index).astype(narrow))
         for name in self.values:
             values = getattr(self, name)
             absent = np.isnan(values).all()

@@ -8,10 +8,11 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from fieldgen.errors import InputError
+from fieldgen.plain_text import one_line
 from fieldgen.readers.assembly import WEATHER_VALUES, Rows, convert_pressure, weather_records
 from fieldgen.readers.epochs import calendar_epoch
-from fieldgen.readers.positions import geodetic_position, is_on_the_ground
-from fieldgen.readers.records import LineError, Rejections, Site, WeatherRecords
+from fieldgen.readers.positions import check_height, geodetic_position, is_on_the_ground
+from fieldgen.readers.records import LONGEST_DETAIL, LineError, Rejections, Site, WeatherRecords
 from fieldgen.readers.text import file_stem, read_lines
 
 LABEL_COLUMN = 60
@@ -57,7 +58,7 @@ def read_rinex_met(path, *, name: str | None = None, pressure_unit: str = "hPa")
     to the format's hPa. Raises InputError if the header or the data cannot be used.
     """
     name = name or str(path)
-    reading = _Reading(name, file_stem(path).upper())
+    reading = _Reading(name, one_line(file_stem(path)).upper() or "?")
     for number, line in read_lines(path, name, reading.rejections):
         if line.strip():
             reading.take(number, line)
@@ -91,7 +92,7 @@ class Header:
         if label == VERSION:
             check_version(content)
         elif label == MARKER:
-            self.marker = content.strip().upper()
+            self.marker = one_line(content).upper()
         elif label == TYPES:
             self._take_types(content.split())
         elif label == POSITION:
@@ -116,11 +117,16 @@ class Header:
         self.positions.setdefault(code.upper(), self._site(xyz, height))
 
     def _site(self, xyz: list[float], height: float) -> Site:
-        """Place of a sensor; the height goes before that of X, Y, Z unless it is zero."""
+        """Place of a sensor; the height goes before that of X, Y, Z unless it is zero or absurd."""
+        try:
+            height = check_height(height)
+        except ValueError as error:
+            self.warnings.append(f"sensor {error}. It is not used.")
+            height = np.nan
         if len(xyz) != 3 or not is_on_the_ground(*xyz):
             return Site(ellipsoidal_height=height)
         place = geodetic_position(*xyz)
-        if height == 0.0:
+        if height == 0.0 or np.isnan(height):
             height = place.ellipsoidal_height
         elif abs(height - place.ellipsoidal_height) > SAME_HEIGHT_M:
             self.warnings.append(
@@ -241,7 +247,8 @@ class _Reading:
                 self.header.check()
                 self._end_header(self.header)
         except ValueError as error:
-            raise InputError(f"{self.file}, line {number}: {error}.") from None
+            detail = str(error)[:LONGEST_DETAIL]
+            raise InputError(f"{self.file}, line {number}: {detail}.") from None
 
     def _end_header(self, header: Header) -> None:
         self.in_header = False

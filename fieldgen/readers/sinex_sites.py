@@ -10,8 +10,11 @@ from itertools import pairwise
 
 import numpy as np
 
+from fieldgen.plain_text import one_line
 from fieldgen.readers.epochs import SINEX_EPOCH, sinex_epoch
 from fieldgen.readers.positions import (
+    UNDULATIONS,
+    check_height,
     check_position,
     distance_km,
     geodetic_position,
@@ -24,9 +27,6 @@ SAME_PLACE_KM = 1.0
 
 SAME_HEIGHT_M = 10.0
 """Heights of one station that differ by more are worth a warning."""
-
-UNDULATIONS = (-110.0, 90.0)
-"""Geoid heights [m] that occur on Earth: ellipsoidal minus mean-sea-level height."""
 
 OPEN = (-np.inf, np.inf)
 """An interval without ends."""
@@ -59,9 +59,10 @@ def parse_site_id(text: str) -> Entry:
     longitude, latitude, height, *msl = (float(number) for number in numbers)
     try:
         longitude, latitude = check_position(longitude, latitude)
+        height, *msl = (check_height(one) for one in (height, *msl))
     except ValueError as error:
         raise LineError("no position", f"station {head[0]}: {error}") from None
-    description = " ".join(head[4:])
+    description = one_line(" ".join(head[4:]))
     site = Site(longitude, latitude, height, msl[0] if msl else np.nan, description)
     return Entry(head[0].upper(), _point(head), site)
 

@@ -37,8 +37,11 @@ WIDEST_FIELD = 30
 LONGEST_STATION = 16
 LONGEST_EPOCH = 14
 
-POINT_MARK = "/"
-"""Between station and PT code, in files that have a PT code in front of the epoch."""
+POINT_MARK = " "
+"""Between station and PT code, which hold none, in files that have a PT code before the epoch."""
+
+LAST_ASCII = 0x7E
+"""The last letter of ASCII; bytes above it may be control characters."""
 
 _EPOCH_IN_LINE = re.compile(rf"(?<!\S){SINEX_EPOCH.pattern}(?!\S)")
 
@@ -118,7 +121,7 @@ def parse_line(text: str, layout: Layout) -> tuple[str, int, float, float]:
     before = text[: match.start()].split() if match else []
     if not 1 <= len(before) <= 2:
         raise LineError("no epoch", f"line begins {text.strip()[:40]!r}")
-    if len(before[0]) > LONGEST_STATION:
+    if len(before[0]) > LONGEST_STATION or not "".join(before).isprintable():
         raise LineError("no station", f"line begins {text.strip()[:40]!r}")
     try:
         time = sinex_epoch(match[0])
@@ -202,6 +205,8 @@ class Solution:
         if offset == 3:
             point = words.words(lines, 1, LONGEST_STATION)
             station = np.char.add(np.char.add(station, POINT_MARK.encode()), point)
+        if (words.letters > LAST_ASCII).any():
+            good &= _each_once(_is_printable, station) == 1
         place = _each_once(self._station_number, station[good])
         return Columns(
             words.line_number(lines[good]),
@@ -234,6 +239,11 @@ class Solution:
     def columns(self) -> Columns:
         """All records in the order of the file."""
         return columns_from_parts(self.parts, DELAY_VALUES)
+
+
+def _is_printable(word: bytes) -> bool:
+    """Whether a word is nothing but letters that can be seen."""
+    return decode(word).isprintable()
 
 
 _NO_EPOCH = np.iinfo(np.int64).min

@@ -50,6 +50,9 @@ OTHER_BLOCKS = (
 )
 """Blocks that are passed over, so that no misspelling of another block is seen in them."""
 
+MOST_BLOCKS = 1000
+"""Different names of blocks in one file; a file that has more is damaged."""
+
 KEYWORDS = {
     "names": re.compile(r"(?:TROPO?[ _]PARAMETERS?[ _]NAMES?|SOLUTION[ _]FIELDS(?:[ _]?\d+)?) "),
     "units": re.compile(r"TROPO?[ _]PARAMETERS?[ _]UNITS? "),
@@ -182,6 +185,11 @@ class _Reading:
         if self.block and name not in BLOCKS and name not in self.blocks_seen:
             self.warnings.append(f"block {name} is read as {self.block}.")
         self.blocks_seen[name] = self.block
+        if len(self.blocks_seen) > MOST_BLOCKS:
+            raise InputError(
+                f"{self.file}: blocks have more than {MOST_BLOCKS} different names, expected about "
+                f"{len(BLOCKS)}. Fetch the file again."
+            )
         if self.block == DESCRIPTION:
             self.declared = {}
             self.layout = None

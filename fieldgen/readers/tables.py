@@ -11,6 +11,7 @@ from typing import NamedTuple
 import numpy as np
 
 from fieldgen.errors import InputError
+from fieldgen.plain_text import one_line
 from fieldgen.readers.assembly import (
     DELAY_VALUES,
     WEATHER_VALUES,
@@ -22,7 +23,7 @@ from fieldgen.readers.assembly import (
     weather_records,
 )
 from fieldgen.readers.epochs import iso_epoch
-from fieldgen.readers.positions import check_position, distance_km
+from fieldgen.readers.positions import UNDULATIONS, check_height, check_position, distance_km
 from fieldgen.readers.records import DelayRecords, LineError, Rejections, Site, WeatherRecords
 from fieldgen.readers.stated_places import StatedPlaces
 from fieldgen.readers.text import first_content_line, read_lines
@@ -235,8 +236,8 @@ def parse_number(row: dict[str, str], column: str) -> float:
 
 
 def parse_identifier(text: str) -> str:
-    """An identifier in upper case; LineError if it is blank or absurdly long."""
-    if not 1 <= len(text) <= LONGEST_IDENTIFIER:
+    """An identifier in upper case; LineError if it is blank, absurdly long or cannot be printed."""
+    if not 1 <= len(text) <= LONGEST_IDENTIFIER or not text.isprintable():
         raise LineError("no identifier", f"it is {text[:40]!r}")
     return text.upper()
 
@@ -257,7 +258,10 @@ def parse_place(identifier: str, row: dict[str, str]) -> tuple[float, ...]:
             longitude, latitude = check_position(longitude, latitude)
         except ValueError as error:
             raise LineError("impossible position", f"{identifier}: {error}") from None
-    return longitude, latitude, *heights
+    try:
+        return longitude, latitude, *(check_height(height) for height in heights)
+    except ValueError as error:
+        raise LineError("impossible height", f"{identifier}: {error}") from None
 
 
 def parse_station(row: dict[str, str]) -> StationRow:
@@ -269,11 +273,21 @@ def parse_station(row: dict[str, str]) -> StationRow:
     barometer = parse_number(row, "barometer_height")
     if np.isnan([ellipsoidal, orthometric, barometer]).all():
         raise LineError("no height", identifier)
-    undulation = parse_number(row, "undulation")
-    name = row.get("name", "")
+    undulation = _parse_undulation(identifier, row)
+    name = one_line(row.get("name", ""))
     return StationRow(
         identifier, longitude, latitude, ellipsoidal, undulation, orthometric, name, barometer
     )
+
+
+def _parse_undulation(identifier: str, row: dict[str, str]) -> float:
+    """The undulation [m] of a row, NaN if not given; LineError if there is no such on Earth."""
+    undulation = parse_number(row, "undulation")
+    low, high = UNDULATIONS
+    if not (np.isnan(undulation) or low <= undulation <= high):
+        detail = f"{identifier}: {undulation:g} m, expected {low:g} to {high:g} m"
+        raise LineError("impossible undulation", detail)
+    return undulation
 
 
 EXCHANGED_KM, NETWORK_KM = 300.0, 1000.0

@@ -7,6 +7,7 @@ or Latin-1 where it is not valid UTF-8. Lines end in LF or CRLF.
 from __future__ import annotations
 
 import gzip
+import os
 import zlib
 from collections.abc import Iterator
 from contextlib import contextmanager
@@ -15,6 +16,7 @@ from pathlib import Path
 from typing import IO, NamedTuple
 
 from fieldgen.errors import InputError
+from fieldgen.input_files import check_is_file
 from fieldgen.readers.records import Rejections
 
 LONGEST_LINE = 10_000
@@ -28,6 +30,9 @@ BEGINNING_BYTES = 300
 
 CHUNK_BYTES = 1 << 22
 """Size of a block [bytes]: about 50 000 lines."""
+
+MOST_UNPACKED, UNPACKED_FREELY = 100, 1 << 24
+"""A file may unpack to this many times its size, or to this size [bytes] if that is more."""
 
 GZIP_MAGIC = b"\x1f\x8b"
 COMPRESS_MAGIC = b"\x1f\x9d"
@@ -58,6 +63,7 @@ def open_bytes(path, name: str) -> Iterator[IO[bytes]]:
     Raises InputError, which begins with `name`, where the file cannot be opened or read to its end.
     """
     try:
+        check_is_file(path)
         with open(path, "rb") as raw:
             start = raw.read(6)
             raw.seek(0)
@@ -107,18 +113,30 @@ def _check_compression(start: bytes, name: str) -> None:
 
 
 def read_chunks(path, name: str, size: int = CHUNK_BYTES) -> Iterator[Chunk]:
-    """The file as chunks of about `size` bytes, cut between lines."""
-    line = 1
+    """The file as chunks of about `size` bytes, cut between lines; blank ones are left out."""
+    line, taken = 1, 0
     with open_bytes(path, name) as stream:
         rest = stream.read(len(UTF8_MARK)).removeprefix(UTF8_MARK)
         while block := stream.read(size):
+            taken += len(block)
+            _check_unpacked(taken, path, name)
             whole, newline, rest = (rest + block).rpartition(b"\n")
             rest = rest[: LONGEST_LINE + 1]
             if newline:
-                yield Chunk(whole + newline, line)
+                if whole.strip():
+                    yield Chunk(whole + newline, line)
                 line += whole.count(b"\n") + 1
         if rest:
             yield Chunk(rest, line)
+
+
+def _check_unpacked(taken: int, path, name: str) -> None:
+    """Refuse a small file that unpacks without end; text of measurements shrinks to a tenth."""
+    if taken > UNPACKED_FREELY and taken > MOST_UNPACKED * os.path.getsize(path):
+        raise InputError(
+            f"{name}: unpacks to more than {MOST_UNPACKED} times its size, expected text of "
+            "measurements, which packs to a tenth. Fetch the file again."
+        )
 
 
 def decode(data: bytes) -> str:
@@ -132,10 +150,15 @@ def decode(data: bytes) -> str:
 def read_lines(
     path, name: str, rejections: Rejections, size: int = CHUNK_BYTES
 ) -> Iterator[tuple[int, str]]:
-    """Line number (from 1) and text without its line ending; lines too long are rejected."""
+    """Line number (from 1) and text without its line ending of the lines that are not empty.
+
+    Lines too long are rejected.
+    """
     for chunk in read_chunks(path, name, size):
         lines = chunk.data.removesuffix(b"\n").split(b"\n")
         for number, line in enumerate(lines, chunk.first_line):
+            if not line:
+                continue
             if len(line) > LONGEST_LINE:
                 reject_long_line(rejections, name, number)
             else:

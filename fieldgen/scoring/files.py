@@ -10,6 +10,7 @@ from collections.abc import Iterable
 from dataclasses import asdict
 from pathlib import Path
 
+from fieldgen.plain_text import cell, one_line
 from fieldgen.products.atomic import whole_file
 from fieldgen.products.metadata import CAUTION, fieldgen_version, format_time
 from fieldgen.scoring.figures import Figures
@@ -82,12 +83,17 @@ def write_table(comments: dict, rows: list[dict], path: Path) -> None:
     """Write rows of the same keys as CSV below comment lines that begin with #; NaN is blank."""
     buffer = io.StringIO()
     for key, text in comments.items():
-        buffer.write(f"# {key}: {' '.join(str(text).split())}\n")
+        buffer.write(f"# {key}: {one_line(str(text))}\n")
     table = csv.DictWriter(buffer, rows[0].keys(), lineterminator="\n")
     table.writeheader()
-    table.writerows(rounded(rows))
+    table.writerows(_cells(row) for row in rounded(rows))
     with whole_file(path) as temporary:
         temporary.write_text(buffer.getvalue(), encoding="utf-8")
+
+
+def _cells(row: dict) -> dict:
+    """A row whose texts no spreadsheet takes for a formula."""
+    return {key: cell(one_line(one)) if isinstance(one, str) else one for key, one in row.items()}
 
 
 def rounded(value):

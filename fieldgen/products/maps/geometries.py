@@ -10,6 +10,7 @@ import shapely
 from shapely.geometry import shape as build_geometry
 
 from fieldgen.errors import InputError
+from fieldgen.input_files import check_is_file
 
 LINE_STEP = 0.05  # longest straight piece of a coast or river [degrees]
 
@@ -22,8 +23,9 @@ def read_geometries(path: Path) -> list[shapely.Geometry]:
     Raises InputError if the file is missing or is not GeoJSON.
     """
     try:
+        check_is_file(path)
         document = json.loads(Path(path).read_text(encoding="utf-8"))
-        return [build_geometry(part) for part in list_geometries(document)]
+        return [check_position(build_geometry(part)) for part in list_geometries(document)]
     except OSError as error:
         raise InputError(
             f"{path}: the file cannot be read ({error.strerror}). Check the path."
@@ -33,12 +35,21 @@ def read_geometries(path: Path) -> list[shapely.Geometry]:
         TypeError,
         LookupError,
         AttributeError,
+        RecursionError,
         shapely.errors.ShapelyError,
     ) as error:
         raise InputError(
             f"{path}: the content is not GeoJSON, expected a FeatureCollection, a Feature or "
             "a geometry in longitude and latitude. Convert the file to GeoJSON first."
         ) from error
+
+
+def check_position(geometry: shapely.Geometry) -> shapely.Geometry:
+    """The geometry; ValueError if it leaves what can be longitude and latitude [degrees]."""
+    longitude, latitude = shapely.get_coordinates(geometry).T
+    if not ((np.abs(longitude) <= 720.0).all() and (np.abs(latitude) <= 90.0).all()):
+        raise ValueError("expected longitude and latitude")
+    return geometry
 
 
 def list_geometries(document: dict) -> list[dict]:

@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-import unicodedata
-
 import numpy as np
 import xarray as xr
 from matplotlib.figure import Figure
 from matplotlib.text import Text
 
+from fieldgen.plain_text import one_line
 from fieldgen.products import look
 from fieldgen.products.maps.figure import draw_words
 from fieldgen.products.maps.layout import EDGE, Layout
@@ -21,17 +20,11 @@ def draw_title(figure: Figure, layout: Layout, network_name: str) -> None:
     """The network's name and the quantity, shortened to the width of the picture."""
     width, height = layout.size
     place, size = (EDGE, height - 40), look.TITLE_SIZE
-    name = draw_words(figure, place, clean_name(network_name), size, weight="bold")
+    name = draw_words(figure, place, one_line(network_name), size, weight="bold")
     quantity = draw_words(figure, place, look.PWV_TITLE, size)
     room = width - 2 * EDGE - TITLE_GAP - quantity.get_window_extent().width
     shorten_to_width(name, room)
     quantity.set_x(name.get_window_extent().x1 + TITLE_GAP)
-
-
-def clean_name(name: str) -> str:
-    """A name on one line without control characters."""
-    kept = (" " if unicodedata.category(letter)[0] in "CZ" else letter for letter in name)
-    return " ".join("".join(kept).split())
 
 
 def shorten_to_width(text: Text, width: float) -> None:

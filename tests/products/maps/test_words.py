@@ -4,8 +4,9 @@ import numpy as np
 import pytest
 import xarray as xr
 
+from fieldgen.plain_text import one_line
 from fieldgen.products import look
-from fieldgen.products.maps.words import clean_name, format_facts, format_hour, read_hour_bounds
+from fieldgen.products.maps.words import format_facts, format_hour, read_hour_bounds
 from fieldgen.products.metadata import CAUTION
 from tests.products.maps.invented import make_painter
 
@@ -21,8 +22,8 @@ def test_title_draws_names_literally(island, name):
     assert not text.get_parse_math()
 
 
-def test_clean_name_leaves_one_line_without_control_characters():
-    assert clean_name(" North\tcoast\r\n\x1b[31m\x00net\u202e ") == "North coast [31m net"
+def test_one_line_leaves_no_control_characters():
+    assert one_line(" North\tcoast\r\n\x1b[31m\x00net\u202e ") == "North coast [31m net"
 
 
 def test_title_of_any_length_stays_on_the_picture(island):
