@@ -10,6 +10,7 @@ from fieldgen.quantities import QUANTITIES
 from fieldgen.readers.network import Network
 from fieldgen.readers.places import sites_of
 from fieldgen.settings import RetrievalTable, Settings
+from fieldgen.station.barometers import screen_barometers
 from fieldgen.station.delay import (
     common_sigma,
     conversion_factor,
@@ -22,7 +23,6 @@ from fieldgen.station.surface_air import (
     SurfaceAir,
     Weather,
     own_barometer,
-    screen_barometers,
     surface_air,
 )
 
