@@ -8,11 +8,12 @@ from __future__ import annotations
 
 from dataclasses import dataclass, replace
 from datetime import timedelta
+from typing import NamedTuple
 
 import numpy as np
 import xarray as xr
 
-from fieldgen.kriging.covariance import Covariance
+from fieldgen.kriging.covariance import Covariance, distances
 from fieldgen.kriging.fitting import (
     AUTO,
     CovarianceFit,
@@ -28,6 +29,8 @@ from fieldgen.station.screening import (
     STATION_FLAGS,
     biased_station,
     disagreements,
+    habits,
+    level_shifts,
     often_gone,
 )
 
@@ -99,6 +102,15 @@ class Model:
     gaps: list[Gaps | None]
 
 
+class Verdict(NamedTuple):
+    """What the neighbours say: values (t, n) bool that disagree, values beyond a lasting shift of
+    level, and condemned stations (n,)."""
+
+    disagree: np.ndarray
+    shifted: np.ndarray
+    out: np.ndarray
+
+
 @dataclass(frozen=True)
 class Day:
     """Everything that makes one day's fields; t hours, all stations of the network.
@@ -144,9 +156,9 @@ def analyse_day(
     if window is None:
         nothing = np.full(of_day.flag.shape, np.nan)
         return Day(None, None, np.zeros(last - first, bool), _assign(of_day, 0, nothing, nothing))
-    model, disagree, out = _model_window(settings, window)
+    model, verdict = _model_window(settings, window)
     window, model = _cut(window, model)
-    of_day = _with_tests(of_day, window, model, disagree[day], out)
+    of_day = _with_tests(of_day, window, model, verdict, day)
     return Day(window, model, _makable(model), of_day)
 
 
@@ -169,19 +181,19 @@ def _make_window(settings: Settings, stations: xr.Dataset, places: Places, day: 
 
 
 def _model_window(settings: Settings, window: Window):
-    """Model of a window, its disagreements (t, n) bool and condemned stations (n,) bool."""
+    """Model of a window, and what the neighbours say of its values."""
     present = np.isfinite(window.pwv)
     trusted, model = present, None
     for _ in range(ROUNDS):
         model = _fit_model(settings, window, trusted, model, _screening_model(settings.kriging))
-        disagree, out = _screen(settings.screening, window, model)
-        good = present & ~disagree & ~out
+        verdict = _screen(settings.screening, window, model)
+        good = present & ~verdict.disagree & ~verdict.shifted & ~verdict.out
         if (good == trusted).all():
             if settings.kriging.covariance == model.fit.covariance.model:
-                return model, disagree, out
+                return model, verdict
             break
         trusted = good
-    return _fit_model(settings, window, trusted, model, settings.kriging.covariance), disagree, out
+    return _fit_model(settings, window, trusted, model, settings.kriging.covariance), verdict
 
 
 def _screening_model(table: KrigingTable) -> str:
@@ -314,54 +326,72 @@ def _variance_factor(kriging: Kriging, values, gaps: list[Gaps | None], expected
     return factor
 
 
-def _screen(limits: ScreeningTable, window: Window, model: Model):
-    """Values (t, n) that their neighbours contradict, and condemned stations (n,).
+def _screen(limits: ScreeningTable, window: Window, model: Model) -> Verdict:
+    """What the neighbours say of a window's values.
 
-    Stations that are biased as a whole go first, the worst of them before the others.
+    Stations that are wrong as a whole go first, the worst of them before the others; then what lies
+    beyond a lasting step; then single values.
     """
     values, _ = window.at_reference(model.scale_height)
     out = np.zeros(values.shape[1], bool)
-    while (
-        worst := _worst_station(limits, window, model, np.where(out, np.nan, values))
-    ) is not None:
+    while True:
+        rest = np.where(out, np.nan, values)
+        found = _left_out(window, model, rest)
+        if found is None:
+            break
+        worst = biased_station(
+            *found[:2],
+            ratio=limits.bias_ratio,
+            difference=limits.neighbour_difference,
+            pairs=(*found[2:], _nearest(window.places)),
+        )
+        if worst is None:
+            break
         out[worst] = True
-    rest = np.where(out, np.nan, values)
+    if found is None:
+        none = np.zeros(values.shape, bool)
+        return Verdict(none, none, out)
+    shifted = level_shifts(found[0], limits.neighbour_difference)
+    rest = np.where(shifted, np.nan, rest)
+    habit = habits(np.where(shifted, np.nan, found[0]), found[1])
     disagree = np.stack(
         [
             disagreements(
                 model.kriging,
                 row,
                 more,
-                ratio=limits.neighbour_ratio * wider,
+                habit,
+                ratio=limits.neighbour_ratio,
                 difference=limits.neighbour_difference,
                 minimum=MINIMUM_STATIONS,
             )
-            for row, more, wider in zip(rest, model.excess, _wider(model), strict=True)
+            for row, more in zip(rest, model.excess, strict=True)
         ]
     )
-    return disagree, out | often_gone(disagree, np.isfinite(rest), limits.condemn_share)
+    out |= often_gone(disagree, np.isfinite(rest), limits.condemn_share)
+    return Verdict(disagree, shifted, out)
 
 
-def _wider(model: Model):
-    """By how much a stormy hour's residuals (t,) may be larger: a front is no fault."""
-    return np.sqrt(np.maximum(model.variance_factor, 1.0))
+def _nearest(places: Places):
+    """The nearest other station (n,) of each."""
+    apart = distances(places.positions, places.positions)
+    np.fill_diagonal(apart, np.inf)
+    return apart.argmin(axis=1)
 
 
-def _worst_station(limits: ScreeningTable, window: Window, model: Model, values) -> int | None:
-    """The station most biased against the others over the window, if enough are left to tell."""
+def _left_out(window: Window, model: Model, values):
+    """Residuals and standard deviations (4, t, n) of leaving each station out, alone and with its
+    nearest; NaN in hours with too few stations. None if there are too few in all."""
     if np.isfinite(values).any(axis=0).sum() <= MINIMUM_STATIONS:
         return None
-    found = [
-        model.kriging.leave_one_out(row, model.kriging.gaps(np.isnan(row), more))
-        for row, more in zip(values, model.excess, strict=True)
-        if _enough(window.places, np.isfinite(row))
-    ]
-    if not found:
-        return None
-    residual, sigma = (np.stack(part) for part in zip(*found, strict=True))
-    return biased_station(
-        residual, sigma, ratio=limits.bias_ratio, difference=limits.neighbour_difference
-    )
+    nearest = _nearest(window.places)
+    found = np.full((4, *values.shape), np.nan)
+    for hour, (row, more) in enumerate(zip(values, model.excess, strict=True)):
+        if _enough(window.places, np.isfinite(row)):
+            gaps = model.kriging.gaps(np.isnan(row), more)
+            found[:2, hour] = model.kriging.leave_one_out(row, gaps)
+            found[2:, hour] = model.kriging.leave_pairs_out(row, gaps, nearest)
+    return found if np.isfinite(found[0]).any() else None
 
 
 def _cut(window: Window, model: Model) -> tuple[Window, Model]:
@@ -385,13 +415,16 @@ def _makable(model: Model):
     return np.array([gap is not None for gap in model.gaps])
 
 
-def _with_tests(stations: xr.Dataset, window: Window, model: Model, disagree, out) -> xr.Dataset:
+def _with_tests(
+    stations: xr.Dataset, window: Window, model: Model, verdict: Verdict, day: slice
+) -> xr.Dataset:
     """The day's stations with the flags of the tests between them and their residuals."""
     shape = stations.flag.shape
     bits = np.zeros(shape, stations.flag.dtype)
     has_value = np.isfinite(window.pwv)
-    bits[:, window.index] = STATION_FLAGS["disagrees_with_neighbours"] * disagree
-    bits[:, window.index] |= STATION_FLAGS["condemned"] * (out & has_value)
+    bits[:, window.index] = STATION_FLAGS["disagrees_with_neighbours"] * verdict.disagree[day]
+    bits[:, window.index] |= STATION_FLAGS["level_shift"] * verdict.shifted[day]
+    bits[:, window.index] |= STATION_FLAGS["condemned"] * (verdict.out & has_value)
     residual, sigma = np.full(shape, np.nan), np.full(shape, np.nan)
     at_reference, _ = window.at_reference(model.scale_height)
     factor = window.pwv / at_reference

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from datetime import timedelta
+
 import numpy as np
 import xarray as xr
 
@@ -18,7 +20,13 @@ from fieldgen.station.delay import (
     independent_sigma,
     mean_temperature,
 )
-from fieldgen.station.screening import STATION_FLAGS, formal_error_too_large, jumps
+from fieldgen.station.screening import STATION_FLAGS
+from fieldgen.station.series import (
+    above_saturation,
+    formal_error_too_large,
+    frozen,
+    jumps,
+)
 from fieldgen.station.surface_air import (
     SurfaceAir,
     Weather,
@@ -29,6 +37,9 @@ from fieldgen.station.surface_air import (
 CONSTANT_FACTOR_SIGMA = 0.025
 """Relative standard error of a constant conversion factor: Pi runs from 0.146 to 0.165 between
 Tm of 255 and 290 K."""
+
+HISTORY = timedelta(days=14)
+"""Time over which a station's usual formal error is found."""
 
 
 def retrieve_water_vapour(network: Network, rows=slice(None)) -> xr.Dataset:
@@ -63,7 +74,9 @@ def retrieve_water_vapour(network: Network, rows=slice(None)) -> xr.Dataset:
         "ztd": delays.ztd.values, "ztd_sigma": sigma, "zhd": zhd, "zwd": zwd,
         "pressure": air.pressure, "pressure_source": air.source, "mean_temperature": tm,
         "pwv": pwv, "pwv_sigma": pwv_sigma, "pwv_independent_sigma": own_sigma,
-        "flag": _series_flags(settings, delays, given, air, pwv),
+        "flag": _series_flags(
+            settings, delays, given, air, pwv, _history(network, rows)
+        ),
     }  # fmt: skip
     series = {name: (("time", "station"), values) for name, values in variables.items()}
     common = _common_sigma_by_hour(pwv, constant, relative_sigma)
@@ -126,19 +139,38 @@ def _conversion(settings: RetrievalTable, air: SurfaceAir):
     return tm, conversion_factor(tm, REFRACTIVITY[settings.refractivity]), sigma / tm
 
 
-def _series_flags(settings: Settings, delays: xr.Dataset, given, air: SurfaceAir, pwv):
-    """Flags (t, n) of the tests that need nothing but the station's own series."""
+def _series_flags(settings: Settings, delays: xr.Dataset, given, air: SurfaceAir, pwv, history):
+    """Flags (t, n) of the tests that need nothing but the station's own series.
+
+    history : (h, n) formal errors [m] before the end of these steps
+    """
     limits, plausible = settings.screening, QUANTITIES["pwv"]
     no_delay = np.isnan(delays.ztd.values) & ~given
     formal = formal_error_too_large(
-        delays.ztd_sigma.values, limits.formal_error, limits.formal_error_ratio
+        delays.ztd_sigma.values, limits.formal_error, limits.formal_error_ratio, history
     )
     no_pressure = ~no_delay & ~given & np.isnan(air.pressure)
     with np.errstate(invalid="ignore"):
         range_ = (pwv < plausible.low) | (pwv > plausible.high)
-    jump = jumps(np.where(formal | range_, np.nan, pwv), limits.jump)
+    saturated = above_saturation(pwv, air.temperature, air.temperature_sigma)
+    still = frozen(
+        np.where(given, delays.pwv.values, delays.ztd.values), frozen_steps(settings)
+    )
+    jump = jumps(np.where(formal | range_ | saturated, np.nan, pwv), limits.jump)
     tests = {
         "no_delay": no_delay, "formal_error": formal, "no_pressure": no_pressure,
-        "out_of_range": range_, "jump": jump,
+        "out_of_range": range_, "jump": jump, "frozen": still, "above_saturation": saturated,
     }  # fmt: skip
     return sum(STATION_FLAGS[name] * found for name, found in tests.items()).astype(np.int16)
+
+
+def frozen_steps(settings: Settings) -> int:
+    """Steps after which an unchanging value is a fault."""
+    return int(settings.screening.frozen / settings.network.time_step)
+
+
+def _history(network: Network, rows):
+    """Formal errors (h, n) [m] of the two weeks that end with the last of some steps."""
+    index = np.arange(network.delays.sizes["time"])[rows]
+    first = index.max() + 1 - int(HISTORY / network.settings.network.time_step)
+    return network.delays.ztd_sigma.values[max(min(first, index.min()), 0) : index.max() + 1]
