@@ -27,10 +27,12 @@ from fieldgen.settings import KrigingTable, ScreeningTable, Settings
 from fieldgen.station.heights import reduction_factor
 from fieldgen.station.screening import (
     STATION_FLAGS,
+    amid_sharp_weather,
     biased_station,
     disagreements,
     habits,
-    level_shifts,
+    lasting_departure,
+    level_shift,
     often_gone,
 )
 
@@ -329,69 +331,108 @@ def _variance_factor(kriging: Kriging, values, gaps: list[Gaps | None], expected
 def _screen(limits: ScreeningTable, window: Window, model: Model) -> Verdict:
     """What the neighbours say of a window's values.
 
-    Stations that are wrong as a whole go first, the worst of them before the others; then what lies
-    beyond a lasting step; then single values.
+    Stations that are wrong as a whole, beyond a lasting step or for some hours go first, the worst
+    of them before the others; then single values.
     """
     values, _ = window.at_reference(model.scale_height)
-    out = np.zeros(values.shape[1], bool)
-    while True:
-        rest = np.where(out, np.nan, values)
-        found = _left_out(window, model, rest)
-        if found is None:
-            break
-        worst = biased_station(
-            *found[:2],
-            ratio=limits.bias_ratio,
-            difference=limits.neighbour_difference,
-            pairs=(*found[2:], _nearest(window.places)),
-        )
-        if worst is None:
-            break
-        out[worst] = True
-    if found is None:
-        none = np.zeros(values.shape, bool)
-        return Verdict(none, none, out)
-    shifted = level_shifts(found[0], limits.neighbour_difference)
-    rest = np.where(shifted, np.nan, rest)
-    habit = habits(np.where(shifted, np.nan, found[0]), found[1])
-    disagree = np.stack(
+    apart = distances(window.places.positions, window.places.positions)
+    np.fill_diagonal(apart, np.inf)
+    excused = amid_sharp_weather(values, apart, limits.jump, limits.neighbour_difference)
+    left_out = LeftOut.of(window, model, values, apart.argmin(axis=1))
+    verdict = _screen_stations(limits, left_out, excused)
+    disagree, shifted, out = verdict
+    if np.isnan(left_out.alone[0]).all():
+        return verdict
+    habit = habits(*left_out.alone)
+    single = np.stack(
         [
             disagreements(
                 model.kriging,
                 row,
                 more,
                 habit,
+                fine,
                 ratio=limits.neighbour_ratio,
                 difference=limits.neighbour_difference,
                 minimum=MINIMUM_STATIONS,
             )
-            for row, more in zip(rest, model.excess, strict=True)
+            for row, more, fine in zip(left_out.values, model.excess, excused, strict=True)
         ]
     )
-    out |= often_gone(disagree, np.isfinite(rest), limits.condemn_share)
+    tested = np.isfinite(left_out.values) | disagree
+    disagree = disagree | single
+    return Verdict(disagree, shifted, out | often_gone(disagree, tested, limits.condemn_share))
+
+
+def _screen_stations(limits: ScreeningTable, left_out: LeftOut, excused) -> Verdict:
+    """What takes several hours to see; it is taken away from `left_out`."""
+    shape, difference = left_out.values.shape, limits.neighbour_difference
+    disagree, shifted, out = np.zeros(shape, bool), np.zeros(shape, bool), np.zeros(shape[1], bool)
+    while np.isfinite(left_out.values).any(axis=0).sum() > MINIMUM_STATIONS:
+        worst = biased_station(
+            *left_out.alone,
+            ratio=limits.bias_ratio,
+            difference=difference,
+            pairs=(*left_out.in_pairs, left_out.nearest),
+        )
+        suspects = ~shifted.any(axis=0)
+        if worst is not None:
+            suspects &= np.arange(shape[1]) == worst
+        residual = left_out.alone[0]
+        step = level_shift(np.where(suspects, residual, np.nan), difference)
+        departure = np.zeros(shape, bool)
+        if step.any():
+            shifted |= step
+        elif worst is not None:
+            out[worst] = True
+        else:
+            departure = lasting_departure(residual, habits(*left_out.alone), difference, excused)
+            if not departure.any():
+                break
+            disagree |= departure
+        left_out.take_away(shifted | disagree | out)
     return Verdict(disagree, shifted, out)
 
 
-def _nearest(places: Places):
-    """The nearest other station (n,) of each."""
-    apart = distances(places.positions, places.positions)
-    np.fill_diagonal(apart, np.inf)
-    return apart.argmin(axis=1)
+@dataclass
+class LeftOut:
+    """Residuals of leaving each station out, kept up to date while values are taken away.
 
+    values : (t, n) at the reference height, NaN where taken away
+    alone, in_pairs : (2, t, n) residuals and standard deviations, leaving out a station, or a
+        station and its `nearest` (n,); NaN in hours with too few stations
+    """
 
-def _left_out(window: Window, model: Model, values):
-    """Residuals and standard deviations (4, t, n) of leaving each station out, alone and with its
-    nearest; NaN in hours with too few stations. None if there are too few in all."""
-    if np.isfinite(values).any(axis=0).sum() <= MINIMUM_STATIONS:
-        return None
-    nearest = _nearest(window.places)
-    found = np.full((4, *values.shape), np.nan)
-    for hour, (row, more) in enumerate(zip(values, model.excess, strict=True)):
-        if _enough(window.places, np.isfinite(row)):
-            gaps = model.kriging.gaps(np.isnan(row), more)
-            found[:2, hour] = model.kriging.leave_one_out(row, gaps)
-            found[2:, hour] = model.kriging.leave_pairs_out(row, gaps, nearest)
-    return found if np.isfinite(found[0]).any() else None
+    window: Window
+    model: Model
+    values: np.ndarray
+    nearest: np.ndarray
+    alone: np.ndarray
+    in_pairs: np.ndarray
+
+    @classmethod
+    def of(cls, window: Window, model: Model, values, nearest) -> LeftOut:
+        """All values of a window."""
+        empty = np.full((2, *values.shape), np.nan)
+        left_out = cls(window, model, values.copy(), nearest, empty, empty.copy())
+        left_out._solve(range(len(values)))
+        return left_out
+
+    def take_away(self, gone) -> None:
+        """Take away values (t, n) bool, and solve the hours anew that lose one."""
+        lost = gone & np.isfinite(self.values)
+        self.values[lost] = np.nan
+        self._solve(np.flatnonzero(lost.any(axis=1)))
+
+    def _solve(self, hours) -> None:
+        kriging = self.model.kriging
+        for hour in hours:
+            row = self.values[hour]
+            self.alone[:, hour] = self.in_pairs[:, hour] = np.nan
+            if _enough(self.window.places, np.isfinite(row)):
+                gaps = kriging.gaps(np.isnan(row), self.model.excess[hour])
+                self.alone[:, hour] = kriging.leave_one_out(row, gaps)
+                self.in_pairs[:, hour] = kriging.leave_pairs_out(row, gaps, self.nearest)
 
 
 def _cut(window: Window, model: Model) -> tuple[Window, Model]:

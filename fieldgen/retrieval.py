@@ -12,7 +12,7 @@ from fieldgen.quantities import QUANTITIES
 from fieldgen.readers.network import Network
 from fieldgen.readers.places import sites_of
 from fieldgen.settings import RetrievalTable, Settings
-from fieldgen.station.barometers import screen_barometers
+from fieldgen.station.barometers import barometer_bias, screen_barometers
 from fieldgen.station.delay import (
     common_sigma,
     conversion_factor,
@@ -25,6 +25,7 @@ from fieldgen.station.series import (
     above_saturation,
     formal_error_too_large,
     frozen,
+    frozen_pressure,
     jumps,
 )
 from fieldgen.station.surface_air import (
@@ -108,9 +109,14 @@ def _air_at_antennas(settings: Settings, stations: xr.Dataset, weather: xr.Datas
         weather.pressure.values, weather.temperature.values, weather.relative_humidity.values
     )
     sigma = settings.retrieval.barometer_sigma
+    still = frozen_pressure(measured.pressure, 2 * frozen_steps(settings))
+    moving = measured._replace(pressure=np.where(still, np.nan, measured.pressure))
     rejected, residual = screen_barometers(
-        measured, barometers, sigma, settings.screening.pressure_difference
+        moving, barometers, sigma, settings.screening.pressure_difference
     )
+    kept = moving._replace(pressure=np.where(rejected, np.nan, moving.pressure))
+    bias = barometer_bias(kept, barometers, sigma)
+    rejected |= still | (bias.rejected & np.isfinite(measured.pressure))
     air = surface_air(
         measured._replace(pressure=np.where(rejected, np.nan, measured.pressure)),
         barometers,
@@ -119,8 +125,16 @@ def _air_at_antennas(settings: Settings, stations: xr.Dataset, weather: xr.Datas
         barometer_sigma=sigma,
         sources=settings.retrieval.pressure,
     )
-    found = {"barometer_rejected": rejected, "barometer_residual": residual}
-    return air, {name: (("time", "site"), values) for name, values in found.items()}
+    by_step = {
+        "barometer_rejected": rejected, "barometer_residual": residual, "barometer_frozen": still
+    }  # fmt: skip
+    whole = {
+        "barometer_bias": bias.value, "barometer_bias_sigma": bias.sigma,
+        "barometer_doubtful": bias.doubtful,
+    }  # fmt: skip
+    return air, {name: (("time", "site"), values) for name, values in by_step.items()} | {
+        name: ("site", values) for name, values in whole.items()
+    }
 
 
 def _realistic_ztd_sigma(formal, settings: RetrievalTable):

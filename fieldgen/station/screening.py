@@ -51,6 +51,17 @@ SHIFT_RATIO = 4.0
 """A shift of level must be this many times its standard error."""
 
 
+RUN_STEPS = 4
+"""Steps whose mean is looked at: an error of some hours shows in it where none of them would."""
+
+RUN_RATIO = 4.0
+"""A mean of some steps must be this many times the SD that such means have in the network."""
+
+
+NEIGHBOURS = 6
+"""Nearest stations that tell whether weather is sharp about a station."""
+
+
 class Habit(NamedTuple):
     """What a station's residuals are like over the window: usual value and SD (n,) [kg m-2]."""
 
@@ -71,15 +82,43 @@ def habits(residual, sigma) -> Habit:
     return Habit(usual, np.sqrt(weight * spread**2 + (1.0 - weight) * model**2))
 
 
+def amid_sharp_weather(values, apart, limit: float, margin: float):
+    """Values (t, n) bool that lie between what the stations around had within a step.
+
+    values (t, n) [kg m-2] at the reference height, apart (n, n) [km]. True where the `NEIGHBOURS`
+    nearest stations ran over more than `limit` [kg m-2] from the step before to the step after,
+    without the highest and the lowest of them, and the value lies within that or `margin` [kg m-2]
+    beyond: a front passes.
+    """
+    nearest = np.argsort(apart, axis=1)[:, :NEIGHBOURS]
+    if nearest.shape[1] < NEIGHBOURS:
+        return np.zeros(values.shape, bool)
+    padded = np.pad(values, ((1, 1), (0, 0)), constant_values=np.nan)
+    three = np.stack([padded[:-2], padded[1:-1], padded[2:]])
+    low = np.where(np.isnan(three), np.inf, three).min(axis=0)[:, nearest]
+    high = np.where(np.isnan(three), -np.inf, three).max(axis=0)[:, nearest]
+    low, high = np.sort(low, axis=2)[:, :, 1], np.sort(high, axis=2)[:, :, -2]
+    with np.errstate(invalid="ignore"):
+        return (high - low > limit) & (values >= low - margin) & (values <= high + margin)
+
+
 def disagreements(
-    kriging: Kriging, values, excess, habit: Habit, *, ratio: float, difference: float, minimum: int
+    kriging: Kriging,
+    values,
+    excess,
+    habit: Habit,
+    excused=False,
+    *,
+    ratio: float,
+    difference: float,
+    minimum: int,
 ):
     """Values (n,) bool of one hour that the other stations contradict.
 
     values (n,) [kg m-2] at the reference height, NaN where missing; excess as in `Kriging`.
     A value goes if its leave-one-out residual, less what is usual there, is above `difference`
     [kg m-2] and above `ratio` times its usual SD, both wider in an hour in which all stations
-    differ more; the worst goes first and the rest is tested anew, so that one bad station does not
+    differ more, and if it is not `excused` (n,) bool; the worst goes first and the rest is tested anew, so that one bad station does not
     condemn its neighbours. Stops at `minimum` stations.
     """
     values = values.copy()
@@ -91,7 +130,7 @@ def disagreements(
         unusual = np.abs(residual - habit.usual)
         standardised = unusual / np.sqrt(np.maximum(habit.scale**2, sigma**2 / 2.0) + excess)
         limit = ratio * _wider(standardised)
-        suspect = (unusual > difference) & (standardised > limit)
+        suspect = (unusual > difference) & (standardised > limit) & ~np.asarray(excused)
         if not suspect.any():
             break
         worst = np.nanargmax(np.where(suspect, standardised, -1.0))
@@ -136,41 +175,66 @@ def biased_station(residual, sigma, *, ratio: float, difference: float, pairs=No
     return int(np.argmax(np.where(suspect, standardised, -1.0))) if suspect.any() else None
 
 
-def level_shifts(residual, difference: float):
-    """Values (t, n) bool on the wrong side of a lasting step in a station's residuals (t, n).
+def level_shift(residual, difference: float):
+    """Values (t, n) bool on the wrong side of the largest lasting step in a station's residuals.
 
-    The step that explains most counts if it is above `difference` [kg m-2] and `SHIFT_RATIO` times
-    its standard error; the wrong side is the one further from the other stations. Sides have at
-    least six steps. A change of antenna or radome, of the software or of the place does this.
+    residual (t, n), NaN where a value is missing. Of each station the step that explains most; it
+    counts if it is above `difference` [kg m-2] and `SHIFT_RATIO` times its standard error. The
+    wrong side is the one further from the other stations; sides have at least six steps. A change
+    of antenna or radome, of the software or of the place does this.
     """
     found = np.zeros(residual.shape, bool)
     known = np.isfinite(residual)
-    count = np.cumsum(known, axis=0)[:-1]
-    total = np.cumsum(np.where(known, residual, 0.0), axis=0)[:-1]
-    after = known.sum(axis=0) - count
-    enough = (count >= MINIMUM_STEPS) & (after >= MINIMUM_STEPS)
-    if not enough.any():
-        return found
-    before_mean = total / np.maximum(count, 1)
-    whole = np.where(known, residual, 0.0).sum(axis=0)
-    after_mean = (whole - total) / np.maximum(after, 1)
-    step = np.where(enough, after_mean - before_mean, 0.0)
-    share = np.sqrt(1.0 / np.maximum(count, 1) + 1.0 / np.maximum(after, 1))
-    best = np.argmax(np.abs(step) / share, axis=0)
-    for station in np.flatnonzero(np.abs(step).max(axis=0) > difference):
-        split = best[station]
-        sides = [residual[: split + 1, station], residual[split + 1 :, station]]
-        if min(np.isfinite(side).sum() for side in sides) < MINIMUM_STEPS:
-            continue
-        levels = np.array([np.nanmedian(side) for side in sides])
-        away = [np.abs(side - level) for side, level in zip(sides, levels, strict=True)]
-        spread = np.nanmedian(np.concatenate(away)) / 0.6745
-        error = spread * share[split, station] * np.sqrt(SHIFT_MEMORY)
+    before = np.cumsum(known, axis=0)
+    after = before[-1] - before
+    total = np.cumsum(np.where(known, residual, 0.0), axis=0)
+    enough = (before >= MINIMUM_STEPS) & (after >= MINIMUM_STEPS)
+    step = (total[-1] - total) / np.maximum(after, 1) - total / np.maximum(before, 1)
+    step = np.where(enough, np.abs(step), 0.0)
+    share = np.sqrt(1.0 / np.maximum(before, 1) + 1.0 / np.maximum(after, 1))
+    split = np.argmax(step / share, axis=0)
+    largest = 0.0
+    for station in np.flatnonzero(step.max(axis=0) > difference):
+        sides = [slice(0, split[station] + 1), slice(split[station] + 1, None)]
+        levels = [np.nanmedian(residual[side, station]) for side in sides]
+        away = np.repeat(levels, [split[station] + 1, len(residual) - split[station] - 1])
+        spread = np.nanmedian(np.abs(residual[:, station] - away)) / 0.6745
+        error = spread * share[split[station], station] * np.sqrt(SHIFT_MEMORY)
         size = abs(levels[1] - levels[0])
-        if size > max(difference, SHIFT_RATIO * error):
-            wrong = int(np.argmax(np.abs(levels)))
-            rows = slice(None, split + 1) if wrong == 0 else slice(split + 1, None)
-            found[rows, station] = known[rows, station]
+        if size > max(difference, SHIFT_RATIO * error, largest):
+            largest = size
+            found[:] = False
+            wrong = sides[int(np.argmax(np.abs(levels)))]
+            found[wrong, station] = known[wrong, station]
+    return found
+
+
+def lasting_departure(residual, habit: Habit, difference: float, excused=False):
+    """Values (t, n) bool of the station that departs most from its habit for some hours.
+
+    residual (t, n), NaN where a value is missing. The mean of `RUN_STEPS` residuals, less what is
+    usual, counts if it is above `difference` [kg m-2] and `RUN_RATIO` times the SD that means of the
+    network's standardised residuals have; of its steps those above `difference` are marked.
+    Values that are `excused` (t, n) bool do not count.
+    """
+    found = np.zeros(residual.shape, bool)
+    residual = np.where(excused, np.nan, residual)
+    if len(residual) < RUN_STEPS:
+        return found
+    unusual = residual - habit.usual
+    windows = np.lib.stride_tricks.sliding_window_view(unusual, RUN_STEPS, axis=0)
+    mean = np.abs(windows.mean(axis=2))  # NaN where a step is missing
+    standardised = mean / habit.scale
+    known = standardised[np.isfinite(standardised)]
+    if not len(known):
+        return found
+    limit = RUN_RATIO * np.median(known) / 0.6745
+    suspect = (mean > difference) & (standardised > limit)
+    if suspect.any():
+        start, station = np.unravel_index(np.argmax(np.where(suspect, mean, -1.0)), mean.shape)
+        rows = slice(start, start + RUN_STEPS)
+        same = np.sign(unusual[rows, station]) == np.sign(windows[start, station].sum())
+        found[rows, station] = same & (np.abs(unusual[rows, station]) > difference)
     return found
 
 

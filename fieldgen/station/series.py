@@ -20,7 +20,7 @@ FEWEST_EQUAL = 5
 """Equal values in a row that chance does not make, however long a step is."""
 
 COARSE = 0.3
-"""Pressures [hPa] printed no finer than this repeat themselves in quiet weather and are not judged."""
+"""Pressures [hPa] printed no finer than this repeat themselves in quiet weather."""
 
 WARMER_ALOFT = 8.0
 """What air above a station may be warmer [K] than its thermometer, in a calm night's inversion.

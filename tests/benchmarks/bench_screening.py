@@ -13,8 +13,10 @@ from __future__ import annotations
 import argparse
 import sys
 import time
+from datetime import timedelta
 from pathlib import Path
 from typing import NamedTuple
+from unittest.mock import patch
 
 import numpy as np
 from threadpoolctl import threadpool_limits
@@ -45,7 +47,7 @@ RECIPES = {
     "40": Recipe(40, 180.0),
     "120": Recipe(120, 300.0),
 }
-COLD = {"cold": Recipe(40, 180.0, 4.0, 0.6, 258.0)}
+COLD = {"cold": Recipe(40, 180.0, 2.0, 0.3, 258.0)}
 
 KINDS = {
     "none": ("", faults.spikes, (0.0,)),
@@ -69,7 +71,8 @@ KINDS = {
 PIECE = Piece("day", faults.DAY.start, faults.DAY.stop, slice(0, 24))
 
 SCREENING_OFF = {
-    "pressure_difference": 1e6, "formal_error": 1e6, "formal_error_ratio": 1e6, "jump": 1e6
+    "pressure_difference": 1e6, "formal_error": 1e6, "formal_error_ratio": 1e6, "jump": 1e6,
+    "frozen": timedelta(days=100),
 }  # fmt: skip
 
 
@@ -100,7 +103,8 @@ def unscreened(network: Network):
     settings = network.settings.model_copy(update={"screening": table})
     believing = faults.copy_of(network)
     believing.settings = settings
-    return at_sea_level(retrieve_water_vapour(believing))[faults.DAY]
+    with patch("fieldgen.station.barometers.COSTLY", 1e9):
+        return at_sea_level(retrieve_water_vapour(believing))[faults.DAY]
 
 
 def examine(network: Network, truth, plant, size: float, draw) -> Counts:
@@ -164,7 +168,8 @@ def main() -> None:
     parser.add_argument("--seeds", type=int, default=4)
     arguments = parser.parse_args()
     started = time.time()
-    print("| fault | gross values | found | smaller | found | good lost |\n|---|---|---|---|---|---|")
+    print("| fault | gross values | found | smaller | found | good lost |")
+    print("|---|---|---|---|---|---|")
     total, by_network = Counts(), {}
     for kind in arguments.kind or KINDS:
         unit, plant, sizes = KINDS[kind]

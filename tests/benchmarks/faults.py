@@ -157,7 +157,8 @@ def swapped_rows(network: Network, size: float, draw) -> Planted:
     touched = np.zeros(network.delays.ztd.shape, bool)
     height = network.stations.orthometric_height.values
     one = int(_some_stations(network, draw, 0)[0])
-    other = int(np.argmin(np.abs(np.abs(height - height[one]) - size) + 1e9 * (height == height[one])))
+    apart = np.abs(height - height[one])
+    other = int(np.argmin(np.where(apart > 0.0, np.abs(apart - size), np.inf)))
     for name in ("longitude", "latitude", "ellipsoidal_height", "orthometric_height"):
         values = network.stations[name].values
         values[[one, other]] = values[[other, one]]
