@@ -135,9 +135,7 @@ def _residuals(weather: Weather, barometers: Sites, barometer_sigma: float):
         if drift not in krigings:
             krigings[drift] = _kriging(PRESSURE_COVARIANCE, usual, barometers, drift)
         kriging = krigings[drift]
-        residual[hour], spread[hour] = kriging.leave_one_out(
-            values, kriging.gaps(np.isnan(values))
-        )
+        residual[hour], spread[hour] = kriging.leave_one_out(values, kriging.gaps(np.isnan(values)))
     return residual, spread, usual
 
 

@@ -118,8 +118,8 @@ def disagreements(
     values (n,) [kg m-2] at the reference height, NaN where missing; excess as in `Kriging`.
     A value goes if its leave-one-out residual, less what is usual there, is above `difference`
     [kg m-2] and above `ratio` times its usual SD, both wider in an hour in which all stations
-    differ more, and if it is not `excused` (n,) bool; the worst goes first and the rest is tested anew, so that one bad station does not
-    condemn its neighbours. Stops at `minimum` stations.
+    differ more, and if it is not `excused` (n,) bool; the worst goes first and the rest is tested
+    anew, so that one bad station does not condemn its neighbours. Stops at `minimum` stations.
     """
     values = values.copy()
     gone = np.zeros(len(values), bool)
@@ -213,8 +213,8 @@ def lasting_departure(residual, habit: Habit, difference: float, excused=False):
     """Values (t, n) bool of the station that departs most from its habit for some hours.
 
     residual (t, n), NaN where a value is missing. The mean of `RUN_STEPS` residuals, less what is
-    usual, counts if it is above `difference` [kg m-2] and `RUN_RATIO` times the SD that means of the
-    network's standardised residuals have; of its steps those above `difference` are marked.
+    usual, counts if it is above `difference` [kg m-2] and `RUN_RATIO` times the SD that means of
+    the network's standardised residuals have; of its steps those above `difference` are marked.
     Values that are `excused` (t, n) bool do not count.
     """
     found = np.zeros(residual.shape, bool)

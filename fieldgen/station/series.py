@@ -16,6 +16,9 @@ LIVELY = 4.0
 """A jump must also be this many times what the hour's stations usually differ from their medians:
 where the whole region changes, one station may, too."""
 
+FEWEST_STATIONS = 6
+"""Stations that can tell how lively an hour is."""
+
 FEWEST_EQUAL = 5
 """Equal values in a row that chance does not make, however long a step is."""
 
@@ -69,7 +72,8 @@ def jumps(water_vapour, limit: float):
     enough = np.isfinite(window).sum(axis=2) >= 3
     median = np.nanmedian(np.where(enough[..., None], window, 0.0), axis=2)
     away = np.where(enough, np.abs(water_vapour - median), np.nan)
-    usual = np.nan_to_num(column_median(away.T)) / 0.6745  # of a normal distribution: its SD
+    told = np.isfinite(away).sum(axis=1) >= FEWEST_STATIONS
+    usual = np.where(told, column_median(away.T) / 0.6745, 0.0)  # of a normal distribution: its SD
     with np.errstate(invalid="ignore"):
         return away > np.maximum(limit, LIVELY * usual)[:, None]
 

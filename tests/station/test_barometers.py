@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from fieldgen.station.barometers import screen_barometers
+from fieldgen.station.barometers import barometer_bias, screen_barometers
 from fieldgen.station.surface_air import Sites
 from tests.station.test_surface_air import dry_weather, sites
 
@@ -42,3 +42,28 @@ def test_screen_barometers_allows_for_the_way_up(error, rejected):
     found, _ = screen_barometers(weather, barometers, 0.3, 1.0)
     assert found[:, -1].all() == rejected
     assert not found[:, :-1].any()
+
+
+def test_barometer_bias_reports_a_drift_early_and_rejects_it_in_time():
+    """Analytic: one of nine barometers is off by 0.3 hPa a day; 0.3 hPa promised by each."""
+    barometers = sites([10.0, 20.0, 50.0, 90.0, 40.0, 15.0, 30.0, 25.0, 60.0])
+    weather = dry_weather(barometers, hours=48)
+    told = {}
+    for day in range(12):
+        drifting = weather._replace(pressure=weather.pressure.copy())
+        drifting.pressure[:, 4] += 0.3 * day
+        bias = barometer_bias(drifting, barometers, 0.3)
+        assert not np.delete(bias.rejected | bias.doubtful, 4).any()
+        told[day] = "rejected" if bias.rejected[4] else "doubtful" if bias.doubtful[4] else ""
+    assert told[0] == told[1] == ""
+    assert "doubtful" in told.values()
+    assert told[11] == "rejected"
+    print(told)
+
+
+def test_barometer_bias_of_two_says_nothing():
+    """A limit: with two barometers nobody knows which is wrong."""
+    barometers = sites([10.0, 20.0])
+    weather = dry_weather(barometers, hours=48)
+    weather.pressure[:, 0] += 10.0
+    assert not barometer_bias(weather, barometers, 0.3).rejected.any()
