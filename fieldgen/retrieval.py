@@ -167,7 +167,7 @@ def _series_flags(settings: Settings, delays: xr.Dataset, given, air: SurfaceAir
     with np.errstate(invalid="ignore"):
         range_ = (pwv < plausible.low) | (pwv > plausible.high)
     saturated = above_saturation(pwv, air.temperature, air.temperature_sigma)
-    still = frozen(np.where(given, delays.pwv.values, delays.ztd.values), frozen_steps(settings))
+    still = frozen(delays.ztd.values, frozen_steps(settings))
     jump = jumps(np.where(formal | range_ | saturated, np.nan, pwv), limits.jump)
     tests = {
         "no_delay": no_delay, "formal_error": formal, "no_pressure": no_pressure,

@@ -99,12 +99,13 @@ def frozen(values, steps: int):
 
 def frozen_pressure(pressure, steps: int):
     """Pressures (t, s) bool that repeat the one before, see `frozen`; barometers that print no
-    finer than `COARSE` [hPa] are not judged."""
+    finer than `COARSE` [hPa] are not judged, and none where no other barometer moves."""
     change = np.abs(np.diff(pressure, axis=0))
     with np.errstate(invalid="ignore"):
         finest = np.where(change > 1e-9, change, np.inf).min(axis=0, initial=np.inf)
     fine = ~(np.isfinite(finest) & (finest >= COARSE))
-    return frozen(pressure, steps) & fine
+    still = frozen(pressure, steps) & fine
+    return still & (np.isfinite(pressure) & ~still).any(axis=1, keepdims=True)
 
 
 def above_saturation(water_vapour, temperature, temperature_sigma):

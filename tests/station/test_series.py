@@ -69,10 +69,14 @@ def test_frozen_marks_repetitions_and_no_short_ones():
 
 def test_frozen_pressure_does_not_judge_a_coarse_barometer():
     """Negative control: whole hectopascals repeat themselves in quiet weather."""
-    fine = np.round(1010.0 + np.linspace(0, 4, 40), 1)[:, None]
-    fine[20:36] = fine[20]
-    assert frozen_pressure(fine, 12).sum() == 15
-    coarse = np.repeat([1010.0, 1011.0, 1012.0], 14)[:, None]
+    fine = np.round(1010.0 + np.linspace(0, 4, 40), 2)[:, None] + [0.0, 3.0]
+    fine[20:36, 0] = fine[20, 0]
+    found = frozen_pressure(fine, 12)
+    assert found[:, 0].sum() == 15
+    assert not found[:, 1].any()
+    assert not frozen_pressure(fine[:, :1], 12)[21:36].any()  # alone, nobody says that air moved
+    coarse = np.repeat([1010.0, 1011.0, 1012.0], 14)[:40, None] + [0.0, 0.0]
+    coarse[:, 1] = 1000.0 + np.linspace(0, 4, 40)
     assert not frozen_pressure(coarse, 12).any()
 
 
