@@ -89,10 +89,10 @@ def test_saturated_column_is_density_times_a_scale_height(celsius, density):
 
 
 def test_above_saturation_needs_a_thermometer():
-    """Negative control: 12 kg m-2 at -20 C cannot be, 12 at +10 C can; an assumed temperature says
+    """Negative control: 16 kg m-2 at -20 C cannot be, 16 at +10 C can; an assumed temperature says
     nothing."""
     cold, mild = np.array([[253.15]]), np.array([[283.15]])
-    value, sure, guess = np.array([[12.0]]), np.array([[0.8]]), np.array([[10.0]])
+    value, sure, guess = np.array([[16.0]]), np.array([[0.8]]), np.array([[5.5]])
     assert above_saturation(value, cold, sure).all()
     assert not above_saturation(value, mild, sure).any()
     assert not above_saturation(value, cold, guess).any()
