@@ -8,11 +8,12 @@ from __future__ import annotations
 
 from dataclasses import dataclass, replace
 from datetime import timedelta
+from typing import NamedTuple
 
 import numpy as np
 import xarray as xr
 
-from fieldgen.kriging.covariance import Covariance
+from fieldgen.kriging.covariance import Covariance, distances
 from fieldgen.kriging.fitting import (
     AUTO,
     CovarianceFit,
@@ -26,8 +27,12 @@ from fieldgen.settings import KrigingTable, ScreeningTable, Settings
 from fieldgen.station.heights import reduction_factor
 from fieldgen.station.screening import (
     STATION_FLAGS,
+    amid_sharp_weather,
     biased_station,
     disagreements,
+    habits,
+    lasting_departure,
+    level_shift,
     often_gone,
 )
 
@@ -99,6 +104,15 @@ class Model:
     gaps: list[Gaps | None]
 
 
+class Verdict(NamedTuple):
+    """What the neighbours say: values (t, n) bool that disagree, values beyond a lasting shift of
+    level, and condemned stations (n,)."""
+
+    disagree: np.ndarray
+    shifted: np.ndarray
+    out: np.ndarray
+
+
 @dataclass(frozen=True)
 class Day:
     """Everything that makes one day's fields; t hours, all stations of the network.
@@ -144,9 +158,9 @@ def analyse_day(
     if window is None:
         nothing = np.full(of_day.flag.shape, np.nan)
         return Day(None, None, np.zeros(last - first, bool), _assign(of_day, 0, nothing, nothing))
-    model, disagree, out = _model_window(settings, window)
+    model, verdict = _model_window(settings, window)
     window, model = _cut(window, model)
-    of_day = _with_tests(of_day, window, model, disagree[day], out)
+    of_day = _with_tests(of_day, window, model, verdict, day)
     return Day(window, model, _makable(model), of_day)
 
 
@@ -169,19 +183,19 @@ def _make_window(settings: Settings, stations: xr.Dataset, places: Places, day: 
 
 
 def _model_window(settings: Settings, window: Window):
-    """Model of a window, its disagreements (t, n) bool and condemned stations (n,) bool."""
+    """Model of a window, and what the neighbours say of its values."""
     present = np.isfinite(window.pwv)
     trusted, model = present, None
     for _ in range(ROUNDS):
         model = _fit_model(settings, window, trusted, model, _screening_model(settings.kriging))
-        disagree, out = _screen(settings.screening, window, model)
-        good = present & ~disagree & ~out
+        verdict = _screen(settings.screening, window, model)
+        good = present & ~verdict.disagree & ~verdict.shifted & ~verdict.out
         if (good == trusted).all():
             if settings.kriging.covariance == model.fit.covariance.model:
-                return model, disagree, out
+                return model, verdict
             break
         trusted = good
-    return _fit_model(settings, window, trusted, model, settings.kriging.covariance), disagree, out
+    return _fit_model(settings, window, trusted, model, settings.kriging.covariance), verdict
 
 
 def _screening_model(table: KrigingTable) -> str:
@@ -314,54 +328,111 @@ def _variance_factor(kriging: Kriging, values, gaps: list[Gaps | None], expected
     return factor
 
 
-def _screen(limits: ScreeningTable, window: Window, model: Model):
-    """Values (t, n) that their neighbours contradict, and condemned stations (n,).
+def _screen(limits: ScreeningTable, window: Window, model: Model) -> Verdict:
+    """What the neighbours say of a window's values.
 
-    Stations that are biased as a whole go first, the worst of them before the others.
+    Stations that are wrong as a whole, beyond a lasting step or for some hours go first, the worst
+    of them before the others; then single values.
     """
     values, _ = window.at_reference(model.scale_height)
-    out = np.zeros(values.shape[1], bool)
-    while (
-        worst := _worst_station(limits, window, model, np.where(out, np.nan, values))
-    ) is not None:
-        out[worst] = True
-    rest = np.where(out, np.nan, values)
-    disagree = np.stack(
+    apart = distances(window.places.positions, window.places.positions)
+    np.fill_diagonal(apart, np.inf)
+    excused = amid_sharp_weather(values, apart, limits.jump, limits.neighbour_difference)
+    left_out = LeftOut.of(window, model, values, apart.argmin(axis=1))
+    verdict = _screen_stations(limits, left_out, excused)
+    disagree, shifted, out = verdict
+    if np.isnan(left_out.alone[0]).all():
+        return verdict
+    habit = habits(*left_out.alone)
+    single = np.stack(
         [
             disagreements(
                 model.kriging,
                 row,
                 more,
-                ratio=limits.neighbour_ratio * wider,
+                habit,
+                fine,
+                ratio=limits.neighbour_ratio,
                 difference=limits.neighbour_difference,
                 minimum=MINIMUM_STATIONS,
             )
-            for row, more, wider in zip(rest, model.excess, _wider(model), strict=True)
+            for row, more, fine in zip(left_out.values, model.excess, excused, strict=True)
         ]
     )
-    return disagree, out | often_gone(disagree, np.isfinite(rest), limits.condemn_share)
+    tested = np.isfinite(left_out.values) | disagree
+    disagree = disagree | single
+    return Verdict(disagree, shifted, out | often_gone(disagree, tested, limits.condemn_share))
 
 
-def _wider(model: Model):
-    """By how much a stormy hour's residuals (t,) may be larger: a front is no fault."""
-    return np.sqrt(np.maximum(model.variance_factor, 1.0))
+def _screen_stations(limits: ScreeningTable, left_out: LeftOut, excused) -> Verdict:
+    """What takes several hours to see; it is taken away from `left_out`."""
+    shape, difference = left_out.values.shape, limits.neighbour_difference
+    disagree, shifted, out = np.zeros(shape, bool), np.zeros(shape, bool), np.zeros(shape[1], bool)
+    while np.isfinite(left_out.values).any(axis=0).sum() > MINIMUM_STATIONS:
+        worst = biased_station(
+            *left_out.alone,
+            ratio=limits.bias_ratio,
+            difference=difference,
+            pairs=(*left_out.in_pairs, left_out.nearest),
+        )
+        suspects = ~shifted.any(axis=0)
+        if worst is not None:
+            suspects &= np.arange(shape[1]) == worst
+        residual = left_out.alone[0]
+        step = level_shift(np.where(suspects, residual, np.nan), difference)
+        departure = np.zeros(shape, bool)
+        if step.any():
+            shifted |= step
+        elif worst is not None:
+            out[worst] = True
+        else:
+            departure = lasting_departure(residual, habits(*left_out.alone), difference, excused)
+            if not departure.any():
+                break
+            disagree |= departure
+        left_out.take_away(shifted | disagree | out)
+    return Verdict(disagree, shifted, out)
 
 
-def _worst_station(limits: ScreeningTable, window: Window, model: Model, values) -> int | None:
-    """The station most biased against the others over the window, if enough are left to tell."""
-    if np.isfinite(values).any(axis=0).sum() <= MINIMUM_STATIONS:
-        return None
-    found = [
-        model.kriging.leave_one_out(row, model.kriging.gaps(np.isnan(row), more))
-        for row, more in zip(values, model.excess, strict=True)
-        if _enough(window.places, np.isfinite(row))
-    ]
-    if not found:
-        return None
-    residual, sigma = (np.stack(part) for part in zip(*found, strict=True))
-    return biased_station(
-        residual, sigma, ratio=limits.bias_ratio, difference=limits.neighbour_difference
-    )
+@dataclass
+class LeftOut:
+    """Residuals of leaving each station out, kept up to date while values are taken away.
+
+    values : (t, n) at the reference height, NaN where taken away
+    alone, in_pairs : (2, t, n) residuals and standard deviations, leaving out a station, or a
+        station and its `nearest` (n,); NaN in hours with too few stations
+    """
+
+    window: Window
+    model: Model
+    values: np.ndarray
+    nearest: np.ndarray
+    alone: np.ndarray
+    in_pairs: np.ndarray
+
+    @classmethod
+    def of(cls, window: Window, model: Model, values, nearest) -> LeftOut:
+        """All values of a window."""
+        empty = np.full((2, *values.shape), np.nan)
+        left_out = cls(window, model, values.copy(), nearest, empty, empty.copy())
+        left_out._solve(range(len(values)))
+        return left_out
+
+    def take_away(self, gone) -> None:
+        """Take away values (t, n) bool, and solve the hours anew that lose one."""
+        lost = gone & np.isfinite(self.values)
+        self.values[lost] = np.nan
+        self._solve(np.flatnonzero(lost.any(axis=1)))
+
+    def _solve(self, hours) -> None:
+        kriging = self.model.kriging
+        for hour in hours:
+            row = self.values[hour]
+            self.alone[:, hour] = self.in_pairs[:, hour] = np.nan
+            if _enough(self.window.places, np.isfinite(row)):
+                gaps = kriging.gaps(np.isnan(row), self.model.excess[hour])
+                self.alone[:, hour] = kriging.leave_one_out(row, gaps)
+                self.in_pairs[:, hour] = kriging.leave_pairs_out(row, gaps, self.nearest)
 
 
 def _cut(window: Window, model: Model) -> tuple[Window, Model]:
@@ -385,13 +456,16 @@ def _makable(model: Model):
     return np.array([gap is not None for gap in model.gaps])
 
 
-def _with_tests(stations: xr.Dataset, window: Window, model: Model, disagree, out) -> xr.Dataset:
+def _with_tests(
+    stations: xr.Dataset, window: Window, model: Model, verdict: Verdict, day: slice
+) -> xr.Dataset:
     """The day's stations with the flags of the tests between them and their residuals."""
     shape = stations.flag.shape
     bits = np.zeros(shape, stations.flag.dtype)
     has_value = np.isfinite(window.pwv)
-    bits[:, window.index] = STATION_FLAGS["disagrees_with_neighbours"] * disagree
-    bits[:, window.index] |= STATION_FLAGS["condemned"] * (out & has_value)
+    bits[:, window.index] = STATION_FLAGS["disagrees_with_neighbours"] * verdict.disagree[day]
+    bits[:, window.index] |= STATION_FLAGS["level_shift"] * verdict.shifted[day]
+    bits[:, window.index] |= STATION_FLAGS["condemned"] * (verdict.out & has_value)
     residual, sigma = np.full(shape, np.nan), np.full(shape, np.nan)
     at_reference, _ = window.at_reference(model.scale_height)
     factor = window.pwv / at_reference

@@ -24,7 +24,8 @@ from fieldgen.report import DayReport, report_day
 from fieldgen.retrieval import retrieve_water_vapour
 from fieldgen.settings import Settings
 from fieldgen.station.heights import reduction_factor
-from fieldgen.station.screening import MEDIAN_STEPS, STATION_FLAGS
+from fieldgen.station.screening import STATION_FLAGS
+from fieldgen.station.series import MEDIAN_STEPS
 from fieldgen.station.surface_air import PRESSURE_SOURCES
 from fieldgen.upkeep.day_record import DayRecord, read_day_record, sizes_of
 from fieldgen.upkeep.fingerprint import Fingerprints, fingerprint_maps

@@ -23,6 +23,12 @@ from fieldgen.station.surface_air import PRESSURE_SOURCES
 HECTOPASCAL_PER_METRE = 0.12
 """Fall of pressure with height near sea level."""
 
+WATER_VAPOUR_PER_METRE = 155.0 * 0.0022768 * HECTOPASCAL_PER_METRE
+"""What a metre too much in a station's height adds to its water vapour [kg m-2], because the
+pressure is brought too high."""
+
+USUAL_SCALE_HEIGHT = 2000.0  # [m]
+
 LIBRARIES = ("numpy", "scipy", "xarray", "netCDF4", "rasterio", "pyproj")
 
 
@@ -39,6 +45,8 @@ class DayReport:
     values_clipped: int
     pressure_sources: dict[str, int]
     barometers_rejected: dict[str, dict]
+    barometers_doubtful: dict[str, dict]
+    stations_condemned: dict[str, dict]
     steps_used: list[int]
     """Of each station of the run, in its order."""
     rejected: dict[str, dict[str, int]]
@@ -60,6 +68,8 @@ def report_day(name: str, day: Day, fields: Fields, files: list[str]) -> DayRepo
             for source, code in PRESSURE_SOURCES.items()
         },
         barometers_rejected=_barometers(day),
+        barometers_doubtful=_doubtful_barometers(day),
+        stations_condemned=_condemned(day),
         steps_used=(day.stations.flag.values == 0).sum(axis=0).tolist(),
         rejected=_rejected(day),
         files=files,
@@ -98,16 +108,49 @@ def _leave_one_out(day: Day) -> dict:
 
 
 def _barometers(day: Day) -> dict[str, dict]:
-    """Steps and median difference [hPa] of the barometers that the others contradict."""
+    """Steps and median difference [hPa] of the barometers that are not used; None of a difference
+    where a barometer was only silent or frozen."""
     rejected = day.stations.barometer_rejected.values
-    residual = day.stations.barometer_residual.values
+    found = {}
+    for index in np.flatnonzero(rejected.any(axis=0)):
+        residual = day.stations.barometer_residual.values[rejected[:, index], index]
+        known = residual[np.isfinite(residual)]
+        found[str(day.stations.site.values[index])] = {
+            "steps": int(rejected[:, index].sum()),
+            "frozen": int(day.stations.barometer_frozen.values[:, index].sum()),
+            "difference": round(float(np.median(known)), 1) if len(known) else None,
+        }
+    return found
+
+
+def _doubtful_barometers(day: Day) -> dict[str, dict]:
+    """Lasting difference and its standard error [hPa] of barometers that are still used."""
+    bias, sigma = day.stations.barometer_bias.values, day.stations.barometer_bias_sigma.values
     return {
         str(day.stations.site.values[index]): {
-            "steps": int(rejected[:, index].sum()),
-            "difference": round(float(np.median(residual[rejected[:, index], index])), 1),
+            "difference": round(float(bias[index]), 2), "sigma": round(float(sigma[index]), 2)
         }
-        for index in np.flatnonzero(rejected.any(axis=0))
-    }
+        for index in np.flatnonzero(day.stations.barometer_doubtful.values)
+    }  # fmt: skip
+
+
+def _condemned(day: Day) -> dict[str, dict]:
+    """Median residual [kg m-2] of condemned stations, and the error of their listed height [m]
+    that would explain it: pressure brought too high, and others' values brought to that height."""
+    found = {}
+    condemned = (day.stations.flag.values & STATION_FLAGS["condemned"]) > 0
+    for index in np.flatnonzero(condemned.any(axis=0)):
+        residual = day.stations.residual.values[:, index]
+        others = day.stations.pwv.values[:, index] - residual
+        if not np.isfinite(residual).any():
+            continue
+        median = float(np.nanmedian(residual))
+        per_metre = WATER_VAPOUR_PER_METRE + float(np.nanmedian(others)) / USUAL_SCALE_HEIGHT
+        found[str(day.stations.station.values[index])] = {
+            "residual": round(median, 2),
+            "height_error": round(median / per_metre),
+        }
+    return found
 
 
 def _rejected(day: Day) -> dict[str, dict[str, int]]:
@@ -156,7 +199,7 @@ class RunReport:
             "colour_limits": [float(limit) for limit in self.limits],
             "stations": self.stations,
             "days": [vars(day) for day in self.days],
-            "warnings": self.barometer_warnings(),
+            "warnings": self.warnings(),
             "summary": self.totals(),
         }
 
@@ -189,24 +232,58 @@ class RunReport:
                 totals[station].update(counts)
         return totals
 
-    def barometer_warnings(self) -> list[str]:
-        """One line for each barometer that the others contradicted."""
+    def warnings(self) -> list[str]:
+        """One line for each barometer or station that the others contradict."""
+        return [
+            *(_barometer_warning(*one) for one in self._by_name("barometers_rejected")),
+            *(_doubt_warning(*one) for one in self._by_name("barometers_doubtful")),
+            *(_station_warning(*one) for one in self._by_name("stations_condemned")),
+        ]
+
+    def _by_name(self, part: str) -> list[tuple[str, list[dict]]]:
+        """What a part of the days' reports says of each barometer or station."""
         found: dict[str, list[dict]] = {}
         for day in self.days:
-            for site, counts in day.barometers_rejected.items():
-                found.setdefault(site, []).append(counts)
-        return [
-            f"barometer {site}: not used in {sum(one['steps'] for one in counts)} steps, where it "
-            f"reads {(worst := max((one['difference'] for one in counts), key=abs)):+.1f} hPa "
-            f"against the others, as if its listed height were wrong by "
-            f"{abs(worst) / HECTOPASCAL_PER_METRE:.0f} m"
-            for site, counts in found.items()
-        ]
+            for name, counts in getattr(day, part).items():
+                found.setdefault(name, []).append(counts)
+        return list(found.items())
 
     def write(self, path: Path) -> None:
         """Write run.json, whole or not at all."""
         with whole_file(path) as temporary:
             temporary.write_text(json.dumps(self.as_dict(), indent=1) + "\n", encoding="utf-8")
+
+
+def _barometer_warning(site: str, days: list[dict]) -> str:
+    steps = f"barometer {site}: not used in {sum(one['steps'] for one in days)} steps"
+    frozen = sum(one["frozen"] for one in days)
+    repeats = f", {frozen} of them because it repeats one value" if frozen else ""
+    differences = [one["difference"] for one in days if one["difference"] is not None]
+    if not differences:
+        return steps + repeats
+    worst = max(differences, key=abs)
+    return (
+        f"{steps}{repeats}, where it reads {worst:+.1f} hPa against the others, as if its listed "
+        f"height were wrong by {abs(worst) / HECTOPASCAL_PER_METRE:.0f} m"
+    )
+
+
+def _doubt_warning(site: str, days: list[dict]) -> str:
+    last = days[-1]
+    return (
+        f"barometer {site}: used, but reads {last['difference']:+.1f} hPa (standard error "
+        f"{last['sigma']:.1f}) against the others for days: it drifts, or its listed height is "
+        f"wrong by {abs(last['difference']) / HECTOPASCAL_PER_METRE:.0f} m"
+    )
+
+
+def _station_warning(station: str, days: list[dict]) -> str:
+    last = days[-1]
+    return (
+        f"station {station}: condemned, it reads {last['residual']:+.1f} kg m-2 against the "
+        f"others, as if its listed height were {abs(last['height_error'])} m too "
+        f"{'high' if last['height_error'] > 0 else 'low'}; its antenna may also be wrong"
+    )
 
 
 def reading_as_dict(reading: ReadingReport) -> dict:

@@ -10,6 +10,7 @@ from fieldgen.quantities import QUANTITIES
 from fieldgen.readers.network import Network
 from fieldgen.readers.places import sites_of
 from fieldgen.settings import RetrievalTable, Settings
+from fieldgen.station.barometers import barometer_bias, screen_barometers
 from fieldgen.station.delay import (
     common_sigma,
     conversion_factor,
@@ -17,12 +18,18 @@ from fieldgen.station.delay import (
     independent_sigma,
     mean_temperature,
 )
-from fieldgen.station.screening import STATION_FLAGS, formal_error_too_large, jumps
+from fieldgen.station.screening import STATION_FLAGS
+from fieldgen.station.series import (
+    above_saturation,
+    formal_error_too_large,
+    frozen,
+    frozen_pressure,
+    jumps,
+)
 from fieldgen.station.surface_air import (
     SurfaceAir,
     Weather,
     own_barometer,
-    screen_barometers,
     surface_air,
 )
 
@@ -95,9 +102,14 @@ def _air_at_antennas(settings: Settings, stations: xr.Dataset, weather: xr.Datas
         weather.pressure.values, weather.temperature.values, weather.relative_humidity.values
     )
     sigma = settings.retrieval.barometer_sigma
+    still = frozen_pressure(measured.pressure, 2 * frozen_steps(settings))
+    moving = measured._replace(pressure=np.where(still, np.nan, measured.pressure))
     rejected, residual = screen_barometers(
-        measured, barometers, sigma, settings.screening.pressure_difference
+        moving, barometers, sigma, settings.screening.pressure_difference
     )
+    kept = moving._replace(pressure=np.where(rejected, np.nan, moving.pressure))
+    bias = barometer_bias(kept, barometers, sigma)
+    rejected |= still | (bias.rejected & np.isfinite(measured.pressure))
     air = surface_air(
         measured._replace(pressure=np.where(rejected, np.nan, measured.pressure)),
         barometers,
@@ -106,8 +118,16 @@ def _air_at_antennas(settings: Settings, stations: xr.Dataset, weather: xr.Datas
         barometer_sigma=sigma,
         sources=settings.retrieval.pressure,
     )
-    found = {"barometer_rejected": rejected, "barometer_residual": residual}
-    return air, {name: (("time", "site"), values) for name, values in found.items()}
+    by_step = {
+        "barometer_rejected": rejected, "barometer_residual": residual, "barometer_frozen": still
+    }  # fmt: skip
+    whole = {
+        "barometer_bias": bias.value, "barometer_bias_sigma": bias.sigma,
+        "barometer_doubtful": bias.doubtful,
+    }  # fmt: skip
+    return air, {name: (("time", "site"), values) for name, values in by_step.items()} | {
+        name: ("site", values) for name, values in whole.items()
+    }
 
 
 def _realistic_ztd_sigma(formal, settings: RetrievalTable):
@@ -136,9 +156,16 @@ def _series_flags(settings: Settings, delays: xr.Dataset, given, air: SurfaceAir
     no_pressure = ~no_delay & ~given & np.isnan(air.pressure)
     with np.errstate(invalid="ignore"):
         range_ = (pwv < plausible.low) | (pwv > plausible.high)
-    jump = jumps(np.where(formal | range_, np.nan, pwv), limits.jump)
+    saturated = above_saturation(pwv, air.temperature, air.temperature_sigma)
+    still = frozen(delays.ztd.values, frozen_steps(settings))
+    jump = jumps(np.where(formal | range_ | saturated, np.nan, pwv), limits.jump)
     tests = {
         "no_delay": no_delay, "formal_error": formal, "no_pressure": no_pressure,
-        "out_of_range": range_, "jump": jump,
+        "out_of_range": range_, "jump": jump, "frozen": still, "above_saturation": saturated,
     }  # fmt: skip
     return sum(STATION_FLAGS[name] * found for name, found in tests.items()).astype(np.int16)
+
+
+def frozen_steps(settings: Settings) -> int:
+    """Steps after which an unchanging value is a fault."""
+    return int(settings.screening.frozen / settings.network.time_step)

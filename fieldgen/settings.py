@@ -232,8 +232,9 @@ class ScreeningTable(_Table):
     formal_error_ratio: Positive = 2.5
     spike: Positive = 0.030
     jump: Positive = 8.0
-    neighbour_ratio: Positive = 4.0
-    neighbour_difference: Positive = 2.5
+    frozen: Duration = timedelta(hours=6)
+    neighbour_ratio: Positive = 3.2
+    neighbour_difference: Positive = 2.2
     bias_ratio: Positive = 2.0
     condemn_share: Annotated[float, Field(gt=0, le=1)] = 0.5
     pressure_difference: Positive = 4.0

@@ -24,7 +24,7 @@ def format_run(run: RunReport) -> str:
     totals = run.totals()
     parts = [
         _format_reading(run.reading),
-        "\n".join(f"warning   {text}" for text in run.barometer_warnings()),
+        "\n".join(f"warning   {text}" for text in run.warnings()),
         _render(_station_table(run)),
         _render(_day_table(run.days)),
         _format_totals(totals),
@@ -82,11 +82,13 @@ def _format_reading(report: ReadingReport) -> str:
 
 def _station_table(run: RunReport) -> Table | None:
     """Stations that lost values, with the reasons; None where every value was used."""
-    table = new_table("station", "steps used", *(name.replace("_", " ") for name in STATION_FLAGS))
-    for station, counts in sorted(run.station_totals().items()):
-        if any(counts[name] for name in STATION_FLAGS):
-            reasons = (str(counts[name] or "") for name in STATION_FLAGS)
-            table.add_row(Text(station), str(counts["used"]), *reasons)
+    totals = run.station_totals()
+    reasons = [name for name in STATION_FLAGS if any(counts[name] for counts in totals.values())]
+    table = new_table("station", "steps used", *(name.replace("_", " ") for name in reasons))
+    for station, counts in sorted(totals.items()):
+        if any(counts[name] for name in reasons):
+            by_reason = (str(counts[name] or "") for name in reasons)
+            table.add_row(Text(station), str(counts["used"]), *by_reason)
     return table if table.row_count else None
 
 

@@ -156,6 +156,23 @@ class Kriging:
         residual = self.projector @ self.fill(gaps, values) / diagonal
         return residual, 1.0 / np.sqrt(diagonal)
 
+    def leave_pairs_out(self, values, gaps: Gaps, partner):
+        """Residual (n,) and its standard deviation of leaving out each station and its partner.
+
+        partner : (n,) index of another station; the residuals of a group g are (P_gg)^-1 (P z)_g
+        """
+        present = np.isfinite(values)
+        index = np.arange(len(values))
+        lost = gaps.root.T @ self.projector[gaps.changed]
+        diagonal = np.where(present, self.diagonal(gaps), np.nan)
+        both = self.projector[index, partner] - np.einsum("ij,ij->j", lost, lost[:, partner])
+        error = self.projector @ self.fill(gaps, values)
+        other, other_error = diagonal[partner], error[partner]
+        alone = np.isnan(other)
+        determinant = np.where(alone, diagonal, diagonal * other - both**2)
+        residual = np.where(alone, error, other * error - both * other_error) / determinant
+        return residual, np.sqrt(np.where(alone, 1.0, other) / determinant)
+
 
 def krige_hours(kriging: Kriging, targets: Places, values, gaps: list[Gaps], dtype=np.float32):
     """Field and kriging variance (t, m) of hours with values (t, n), NaN where missing."""

@@ -43,9 +43,6 @@ _STANDARD_TEMPERATURE = 288.15
 _STANDARD_TEMPERATURE_SIGMA = 10.0
 """Temperature at sea level where no thermometer reports [K]: ICAO standard atmosphere."""
 
-SURE = 4.0
-"""A barometer's residual counts if it is this many times its own standard deviation, too."""
-
 _LINEAR_DRIFT_MINIMUM = 6
 """Barometers needed before a plane is fitted through them."""
 
@@ -144,38 +141,6 @@ def _bring(pressure, relative_humidity, temperature, height, new_height):
     return brought, layer_pressure_sigma(brought, new_height - height, layer)
 
 
-def screen_barometers(weather: Weather, barometers: Sites, barometer_sigma: float, limit: float):
-    """Pressures (t, s) [hPa] brought to one level differ from the others' by more than `limit`,
-    and by more than `SURE` times what weather and the way to the level explain.
-
-    Returns rejected (t, s) bool and the residuals (t, s) [hPa] of leaving each barometer out.
-    The worst barometer of an hour goes first, so that it does not condemn its neighbours.
-    """
-    rejected = np.zeros(weather.pressure.shape, bool)
-    residuals = np.full(weather.pressure.shape, np.nan)
-    if not len(barometers.height):
-        return rejected, residuals
-    level = barometers.height.mean()
-    at_level, error = pressure_at_level(weather, barometers, level, barometer_sigma)
-    krigings = {
-        drift: _kriging(PRESSURE_COVARIANCE, _usual(error), barometers, drift)
-        for drift in ("constant", "linear")
-    }
-    for hour, values in enumerate(at_level):
-        values = values.copy()
-        while (count := np.isfinite(values).sum()) >= 3:
-            kriging = krigings[_drift(count)]
-            residual, sigma = kriging.leave_one_out(values, kriging.gaps(np.isnan(values)))
-            residuals[hour] = np.where(np.isfinite(residual), residual, residuals[hour])
-            suspect = (np.abs(residual) > limit) & (np.abs(residual) > SURE * sigma)
-            if not suspect.any():
-                break
-            worst = np.argmax(np.where(suspect, np.abs(residual), -1.0))
-            rejected[hour, worst] = True
-            values[worst] = np.nan
-    return rejected, residuals
-
-
 def surface_air(
     weather: Weather,
     barometers: Sites,
@@ -228,13 +193,13 @@ def _neighbours_pressure(weather, barometers, antennas, own, temperature, barome
     level = barometers.height.mean()
     at_level, error = pressure_at_level(weather, barometers, level, barometer_sigma)
     at_level_temperature = temperature + STANDARD_LAPSE_RATE.value * (antennas.height - level)
-    drifts = np.array([_drift(count) for count in np.isfinite(at_level).sum(axis=1)])
+    drifts = np.array([drift_of_pressure(count) for count in np.isfinite(at_level).sum(axis=1)])
     for drift in ("constant", "linear"):
         hours = (drifts == drift) & np.isfinite(at_level).any(axis=1)
         if not hours.any():
             continue
         field, variance = _krige_hours(
-            PRESSURE_COVARIANCE, at_level[hours], _usual(error), barometers, antennas, drift
+            PRESSURE_COVARIANCE, at_level[hours], usual_variance(error), barometers, antennas, drift
         )
         pressure[hours], way = _bring(
             field, np.full_like(field, np.nan), at_level_temperature[hours], level, antennas.height
@@ -243,23 +208,17 @@ def _neighbours_pressure(weather, barometers, antennas, own, temperature, barome
     return pressure, sigma
 
 
-def _drift(count: int) -> str:
+def drift_of_pressure(count: int) -> str:
     """Drift of pressure for a number of barometers: a plane needs a few more than three."""
     return "linear" if count >= _LINEAR_DRIFT_MINIMUM else "constant"
 
 
-def _usual(error_variance):
+def usual_variance(error_variance):
     """Mean over the hours (s,) of error variances (t, s); one where a barometer is silent."""
     known = np.isfinite(error_variance)
     total = np.where(known, error_variance, 0.0).sum(axis=0)
     count = known.sum(axis=0)
     return np.where(count > 0, total / np.maximum(count, 1), 1.0)
-
-
-def _kriging(covariance, error_variance, sources: Sites, drift: str) -> Kriging:
-    maker = PlaceMaker(sources.longitude, sources.latitude, drift)
-    places = maker.places(sources.longitude, sources.latitude)
-    return Kriging(covariance, places, error_variance)
 
 
 def _krige_hours(covariance, values, error_variance, sources: Sites, targets: Sites, drift):

@@ -11,6 +11,7 @@ from fieldgen.constants import MEAN_TEMPERATURE, REFRACTIVITY
 from fieldgen.quantities import QUANTITIES
 from fieldgen.retrieval import retrieve_water_vapour
 from fieldgen.station.delay import conversion_factor, hydrostatic_delay, mean_temperature
+from fieldgen.station.screening import STATION_FLAGS
 from tests.open_data import require
 
 COLUMNS = ["day", "pwv", "pwv_sigma", "ztd", "pressure", "temperature", "relative_humidity"]
@@ -160,6 +161,12 @@ def test_retrieve_water_vapour_agrees_with_the_published_record(tmp_path, record
     write_site(tmp_path, rows)
     network = read_network(tmp_path / "network.toml")
     found = retrieve_water_vapour(network).isel(station=0)[["pwv", "flag"]].to_dataframe()
+    lost = {
+        name: float(((found.flag & STATION_FLAGS[name]) > 0).mean())
+        for name in ("jump", "frozen", "above_saturation")
+    }
+    print(lost)
+    assert sum(lost.values()) < 0.005  # real values, monsoon and all, are no faults
     published = pd.Series(
         rows.pwv.to_numpy(), index=rows.time.dt.ceil("30min").dt.as_unit(found.index.unit)
     )

@@ -6,7 +6,8 @@ import numpy as np
 import pytest
 import xarray as xr
 
-from fieldgen.station.surface_air import Sites, Weather, screen_barometers, surface_air
+from fieldgen.station.barometers import screen_barometers
+from fieldgen.station.surface_air import Sites, Weather, surface_air
 from tests.open_data import require
 
 calc = pytest.importorskip("metpy.calc", reason="MetPy turns altimeter settings into pressures")

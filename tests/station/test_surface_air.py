@@ -9,7 +9,6 @@ from fieldgen.station.surface_air import (
     Sites,
     Weather,
     own_barometer,
-    screen_barometers,
     surface_air,
 )
 
@@ -100,39 +99,3 @@ def test_without_weather_there_is_no_pressure():
     )  # fmt: skip
     assert np.isnan(air.pressure).all()
     assert (air.source == 0).all()
-
-
-def test_screen_barometers_finds_the_wrong_height_and_only_that():
-    """Negative control: a barometer listed 80 m too high reads 9.5 hPa off; the others stay."""
-    barometers = sites([10.0, 200.0, 500.0, 900.0, 40.0, 1500.0, 300.0])
-    weather = dry_weather(barometers)
-    listed = barometers._replace(height=barometers.height + np.array([0, 0, 80.0, 0, 0, 0, 0]))
-    rejected, residual = screen_barometers(weather, listed, 0.3, 4.0)
-    assert rejected[:, 2].all()
-    assert rejected.sum() == 3
-    assert residual[0, 2] == pytest.approx(9.5, abs=1.0)
-    assert not screen_barometers(weather, barometers, 0.3, 4.0)[0].any()
-
-
-def test_screen_barometers_leaves_a_gradient_alone():
-    """Negative control: 3.9 hPa over 100 km is a storm, and every barometer tells the truth."""
-    draw = np.random.default_rng(3)
-    longitude, latitude = draw.uniform(-34, -24, 15), draw.uniform(44, 52, 15)
-    barometers = Sites(longitude, latitude, np.full(15, 20.0))
-    weather = dry_weather(barometers)
-    slope = 3.9 * (latitude - 48.0) * 111.0 / 100.0
-    weather = weather._replace(pressure=weather.pressure + slope)
-    assert np.ptp(slope) > 25.0
-    assert not screen_barometers(weather, barometers, 0.3, 4.0)[0].any()
-
-
-@pytest.mark.parametrize(("error", "rejected"), [(2.0, False), (20.0, True)])
-def test_screen_barometers_allows_for_the_way_up(error, rejected):
-    """Negative control: 2000 m above the others, 2 hPa is what an inversion does, 20 hPa is not,
-    whatever the limit."""
-    barometers = sites([10.0, 20.0, 30.0, 15.0, 25.0, 40.0, 2000.0])
-    weather = dry_weather(barometers)
-    weather.pressure[:, -1] += error
-    found, _ = screen_barometers(weather, barometers, 0.3, 1.0)
-    assert found[:, -1].all() == rejected
-    assert not found[:, :-1].any()
