@@ -20,6 +20,7 @@ STATION_FLAGS = {
     "jump": 16,
     "disagrees_with_neighbours": 32,
     "condemned": 64,
+    "climatological_pressure": 128,
 }
 """Bits of the station file's flag. `condemned`: the station as a whole is
 biased against its neighbours or disagrees so often that no hour of it is used."""
