@@ -281,13 +281,14 @@ def _bring_to_places(quantity: str, way: Callable, values):
 
 def _read_netcdf(path, name: str, longitude, latitude) -> list[GridField]:
     try:
-        with xr.open_dataset(path, engine="netcdf4") as dataset:
-            return [
-                _netcdf_field(dataset, variable, quantity, name, longitude, latitude)
-                for variable, quantity in _known_variables(dataset)
-            ]
-    except (OSError, ValueError, RuntimeError, KeyError) as error:
+        dataset = xr.open_dataset(path, engine="netcdf4")
+    except (OSError, ValueError, RuntimeError) as error:  # ValueError: times that make no sense
         raise InputError(f"{name}: cannot be read as CF NetCDF: {error}.") from None
+    with dataset:
+        return [
+            _netcdf_field(dataset, variable, quantity, name, longitude, latitude)
+            for variable, quantity in _known_variables(dataset)
+        ]
 
 
 def _known_variables(dataset: xr.Dataset) -> list[tuple[str, str]]:
@@ -341,7 +342,10 @@ def _netcdf_field(
         raise InputError(f"{where}: has no time, expected a coordinate with standard_name time.")
     else:
         moments = np.atleast_1d(time.values).astype("datetime64[s]")
-    values = np.asarray(array.values, float).reshape(len(moments), *way.shape)
+    try:
+        values = np.asarray(array.values, float).reshape(len(moments), *way.shape)
+    except (OSError, RuntimeError) as error:
+        raise InputError(f"{where}: cannot be read: {error}.") from None
     brought = _bring_to_places(quantity, way.interpolate, values)
     return _converted(quantity, moments, brought, str(array.attrs.get("units", "")), where)
 
@@ -371,10 +375,13 @@ def _netcdf_way(dataset: xr.Dataset, array: xr.DataArray, where: str, longitude,
         centre = _centre(longitude)
         axes = y.values, _near(x.values, centre)
         return _axes_way(array, (y.dims[0], x.dims[0]), axes, (latitude, _near(longitude, centre)))
-    if None not in mapped and "grid_mapping" in array.attrs:
+    if all(axis is not None for axis in mapped) and "grid_mapping" in array.attrs:
         at = _in_crs(dataset, array, where, longitude, latitude)
         scale = [1000.0 if axis.attrs.get("units") == "km" else 1.0 for axis in mapped]
-        axes = tuple(axis.values * by for axis, by in zip(mapped, scale, strict=True))
+        axes = [axis.values * by for axis, by in zip(mapped, scale, strict=True)]
+        if mapped[1].attrs.get("standard_name") == "grid_longitude":
+            centre = _centre(at[0])
+            axes[1], at = _near(axes[1], centre), (_near(at[0], centre), at[1])
         return _axes_way(array, tuple(axis.dims[0] for axis in mapped), axes, at[::-1])
     if y is not None and x is not None and y.ndim and y.dims == x.dims:
         index, interpolate = _scattered(x.values, y.values, longitude, latitude)
