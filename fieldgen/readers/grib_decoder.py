@@ -15,7 +15,7 @@ import numpy as np
 
 SHORT_NAMES = {
     "sp": "surface_pressure", "msl": "msl_pressure", "prmsl": "msl_pressure",
-    "mslet": "msl_pressure", "2t": "temperature", "orog": "surface_height",
+    "2t": "temperature", "orog": "surface_height",
     "z": "surface_geopotential",
 }  # fmt: skip
 """Names of eccodes by what they are here. `z`, and `sp`, count at the surface alone."""

@@ -52,34 +52,41 @@ class Heights(NamedTuple):
         return len(known) > 0 and float(np.median(known)) >= SMALL_UNDULATION
 
 
-def check_listed(heights: Heights, listed, source: str, report: ReadingReport):
-    """Hold heights above sea level that a `source` lists (n,) [m] against the geoid.
+def check_listed(heights: Heights, lists: dict[str, np.ndarray], report: ReadingReport):
+    """Hold heights above sea level (n,) [m], by the name of who lists them, against the geoid.
 
-    Reports a sign or a geoid that is wrong at most stations; returns the stations (n,) bool that
-    this explains.
+    Reports a sign or a geoid that is wrong at most stations of a list; returns the stations (n,)
+    bool whose listed heights this explains.
     """
-    computed = heights.ellipsoidal - heights.undulation
-    apart = np.abs(listed - computed)
-    wrong = apart > SAME_HEIGHT
-    compared = np.isfinite(apart).sum()
-    if not heights.matters or compared < FEWEST:
-        return np.zeros(len(apart), bool)
+    all_explained = np.zeros(len(heights.used), bool)
     others = {
-        "plus undulation, so one of the two has the geoid's sign wrong":
+        "plus undulation, so one of the two has the geoid's sign wrong. Turn that of "
+        "terrain.geoid, or of the undulations in stations.table, if the list is right":
             heights.ellipsoidal + heights.undulation,
-        "itself, so the geoid has been forgotten in the list": heights.ellipsoidal,
+        "as it is, so the geoid has been forgotten in the list. Leave the listed heights out, "
+        "or give the ellipsoidal ones": heights.ellipsoidal,
     }  # fmt: skip
+    if not heights.matters:
+        return all_explained
     for words, other in others.items():
-        explained = wrong & (np.abs(listed - other) <= SAME_HEIGHT)
-        if explained.sum() > MOST * compared:
+        figures = []
+        for source, listed in lists.items():
+            apart = np.abs(listed - (heights.ellipsoidal - heights.undulation))
+            compared = np.isfinite(apart).sum()
+            explained = (apart > SAME_HEIGHT) & (np.abs(listed - other) <= SAME_HEIGHT)
+            if compared >= FEWEST and explained.sum() > MOST * compared:
+                all_explained |= explained
+                figures.append(
+                    f"{source} ({explained.sum()} of {compared} stations, median difference "
+                    f"{np.median(np.abs(listed - other)[explained]):.1f} m, against "
+                    f"{np.median(apart[explained]):.1f} m from ellipsoidal height less undulation)"
+                )
+        if figures:
             report.warnings.append(
-                f"geoid: the heights above sea level that {source} list agree with ellipsoidal "
-                f"height {words}: {explained.sum()} of {compared} stations, median difference "
-                f"{np.median(np.abs(listed - other)[explained]):.1f} m, against "
-                f"{np.median(apart[explained]):.1f} m from ellipsoidal height less undulation"
+                f"geoid: the heights above sea level in {' and '.join(figures)} agree with "
+                f"ellipsoidal height {words}"
             )
-            return explained
-    return np.zeros(len(apart), bool)
+    return all_explained
 
 
 def check_terrain(heights: Heights, terrain, report: ReadingReport) -> None:

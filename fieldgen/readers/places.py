@@ -161,11 +161,7 @@ def _heights(
     listed = column["orthometric_height"]
     ellipsoidal = column["ellipsoidal_height"]
     computed = ellipsoidal - geoid_height
-    explained = np.zeros(len(ids), bool)
-    for source, heights in lists.items():
-        explained |= check_listed(
-            Heights(computed, ellipsoidal, geoid_height), heights, source, report
-        )
+    explained = check_listed(Heights(computed, ellipsoidal, geoid_height), lists, report)
     for index in np.flatnonzero((np.abs(listed - computed) > SAME_HEIGHT) & ~explained):
         report.warnings.append(
             f"{ids[index]}: its listed height above sea level is {listed[index]:.1f} m, but "
