@@ -224,6 +224,21 @@ def test_climatology_in_fields_is_a_common_error(tmp_path):
     assert float(np.abs(error).mean()) < 3.0 * float(fields.common_sigma.mean())
 
 
+def test_fields_of_a_network_without_barometers_hold_their_error_bars(tmp_path):
+    """Analytic atmosphere: a day with pressure from the model alone, over land."""
+    network = read(tmp_path, GRID)
+    fields = fieldgen.make_fields(network, "2026-09-09T01:00", "2026-09-10T00:00")
+    with xr.open_dataset(DEMO / "truth" / "pwv_truth.nc") as opened:
+        true = opened.pwv.sortby("y").coarsen(y=2, x=2).mean().sel(time=fields.time).load()
+    np.testing.assert_allclose(true.x, fields.x)
+    error = (fields.pwv - true).where(fields.flag == 0)
+    rmse = float(np.sqrt((error**2).mean()))
+    deviation = float(np.sqrt(((error / fields.pwv_sigma) ** 2).mean()))
+    print(f"fields without barometers: RMSE {rmse:.2f} kg m-2, SD {deviation:.2f}")
+    assert rmse < 1.1
+    assert 0.5 < deviation < 1.2
+
+
 def test_stations_with_a_barometer_weigh_more_than_those_with_a_model(network):
     """Second derivation: the common part of a source that only some draw on. With a share f of the
     stations on the grid, f of its common error moves the field, and 1 - f tells them apart."""

@@ -48,8 +48,9 @@ GRID_COMMON_SHARE = 0.5
 lows lie off by the same amount over hundreds of kilometres. Common practice, no source."""
 
 SEA_LEVEL_WAY = 1.5
-"""What the error of the way up is multiplied with where a model's pressure is that at sea level: the
-model came down from its ground by a rule of its own. Measured on one analysis of North America."""
+"""What the error of the way up is multiplied with where a model's pressure is that at sea level:
+the model came down from its ground by a rule of its own. Measured on one analysis of North
+America."""
 
 GRID_TEMPERATURE_SIGMA = 2.0
 """Standard error of a model's temperature at 2 m [K]. Common practice, no source."""
