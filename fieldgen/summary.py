@@ -96,12 +96,14 @@ def _format_reading(report: ReadingReport) -> str:
 
 
 def _station_table(run: RunReport) -> Table | None:
-    """Stations that lost values, with the reasons; None where every value was used."""
-    table = new_table("station", "steps used", *(name.replace("_", " ") for name in STATION_FLAGS))
-    for station, counts in sorted(run.station_totals().items()):
-        if any(counts[name] for name in STATION_FLAGS):
-            reasons = (str(counts[name] or "") for name in STATION_FLAGS)
-            table.add_row(Text(station), str(counts["used"]), *reasons)
+    """Stations that lost values, with the reasons that occur; None where every value was used."""
+    totals = sorted(run.station_totals().items())
+    reasons = [name for name in STATION_FLAGS if any(counts[name] for _, counts in totals)]
+    table = new_table("station", "steps used", *(name.replace("_", " ") for name in reasons))
+    for station, counts in totals:
+        if any(counts[name] for name in reasons):
+            lost = (str(counts[name] or "") for name in reasons)
+            table.add_row(Text(station), str(counts["used"]), *lost)
     return table if table.row_count else None
 
 
