@@ -323,8 +323,8 @@ def _netcdf_field(
     where = f"{name}, {variable}"
     array = dataset[variable]
     time = _time_of(array)
-    if time is not None and time.ndim == 1:
-        array = array.transpose(time.dims[0], ...)
+    over_time = () if time is None else time.dims
+    array = array.transpose(*over_time, ...)  # turns the coordinates as well
     cells, way = _netcdf_way(dataset, array, where, longitude, latitude)
     array = array.isel(cells)
     extra = [
@@ -385,14 +385,12 @@ def _netcdf_way(dataset: xr.Dataset, array: xr.DataArray, where: str, longitude,
         return _axes_way(array, tuple(axis.dims[0] for axis in mapped), axes, at[::-1])
     if y is not None and x is not None and y.ndim and y.dims == x.dims:
         index, interpolate = _scattered(x.values, y.values, longitude, latitude)
-        cells = {dim: slice(None) for dim in array.dims if dim in y.dims}
-        turned = [y.dims.index(dim) for dim in cells]  # the array's order may differ from theirs
+        shape = tuple(array.sizes[dim] for dim in y.dims)
 
         def from_all(values):
-            ordered = np.transpose(values, [0, *(1 + np.argsort(turned))])
-            return interpolate(ordered.reshape(len(values), -1)[:, index])
+            return interpolate(values.reshape(len(values), -1)[:, index])
 
-        return cells, _Way(tuple(array.sizes[dim] for dim in cells), from_all)
+        return {dim: slice(None) for dim in y.dims}, _Way(shape, from_all)
     raise InputError(
         f"{where}: has no known grid, expected coordinates with standard_name latitude and "
         "longitude, or projection coordinates and a grid_mapping."

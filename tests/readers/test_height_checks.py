@@ -176,6 +176,13 @@ def test_one_wrong_barometer_is_not_the_geoid():
     assert said(check_barometers, weather, grid, 57.0) == []
 
 
+def test_five_wrong_barometers_of_eight_are_not_the_geoid():
+    """Negative control: less than two thirds of them, however far off."""
+    weather, grid = barometers(0.0)
+    weather["orthometric_height"][:5] += 100.0
+    assert said(check_barometers, weather, grid, 57.0) == []
+
+
 def demo(folder, geoid, *, blank=True, grids=False):
     """Warnings about the geoid of the demo with another geoid; orthometric heights left out."""
     with open(DEMO / "stations.csv", newline="") as file:

@@ -136,6 +136,21 @@ def test_two_dimensional_coordinates(tmp_path, turned):
     np.testing.assert_allclose(field.values[2], temperature(LONGITUDE, LATITUDE), atol=0.01)
 
 
+def test_surface_pressure_is_linear_in_its_logarithm(tmp_path):
+    """Analytic: an isothermal atmosphere over a slope of 2 km between two cells; half way up it the
+    pressure is 20 hPa below the mean of the two."""
+    x, y = np.arange(-30.0, -25.0), np.arange(45.0, 51.0)
+    coordinates = {"lat": ("lat", y, NORTH), "lon": ("lon", x, EAST)}
+    slope = 1000.0 * np.exp(-2000.0 * (x + 30.0) / 8000.0)
+    values = np.broadcast_to(slope, (len(y), len(x)))
+    path = write(
+        tmp_path / "a.nc", ("lat", "lon"), coordinates, values,
+        name="surface_air_pressure", units="hPa",
+    )  # fmt: skip
+    (field,) = read(path, np.full(3, -28.5), LATITUDE).fields
+    np.testing.assert_allclose(field.values, 1000.0 * np.exp(-3000.0 / 8000.0), rtol=1e-6)
+
+
 def test_places_outside_the_grid_have_no_value(tmp_path):
     """A limit: nothing is extrapolated, a place beyond the last cell's centre is NaN."""
     (field,) = read(
