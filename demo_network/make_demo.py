@@ -10,7 +10,7 @@ import sys
 from pathlib import Path
 
 import numpy as np
-from generator import formats, observations, truth, truth_files
+from generator import formats, model, observations, truth, truth_files
 from generator.island import terrain
 from generator.map_lines import catchments, coast, rivers
 from generator.setting import HOURS, START
@@ -31,6 +31,10 @@ def make_demo(folder):
     sensors = sensors_on(height, receivers)
     gross = make_delays(folder, weather, height, receivers)
     pressure_bias = make_weather(folder, weather, height, sensors)
+    states, moments = model.model_weather(weather, height)
+    truth_files.write_model_weather(
+        folder / "weather_grid.nc", states, moments, model.LONGITUDE, model.LATITUDE
+    )
     faults = observations.planted_faults(receivers, gross, pressure_bias, sensors)
     formats.write_json(folder / "truth" / "faults.json", faults)
     truth_files.write_water_vapour(

@@ -217,6 +217,10 @@ class RunReport:
             "steps_made": sum(day.steps_made for day in self.days),
             **rms,
             "values_clipped": sum(day.values_clipped for day in self.days),
+            "pressure_sources": {
+                source: sum(day.pressure_sources[source] for day in self.days)
+                for source in PRESSURE_SOURCES
+            },
             "files_written": sum(len(day.files) for day in self.days) + 1,
         }
 

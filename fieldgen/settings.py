@@ -181,6 +181,7 @@ class StationsTable(_Table):
 
     delays: list[Pattern] = Field(min_length=1)
     weather: list[Pattern] = []
+    grids: list[Pattern] = []
     table: FilePath | None = None
     pressure_unit: Literal["hPa", "0.1 hPa", "Pa"] = "hPa"
 
@@ -206,7 +207,13 @@ class RetrievalTable(_Table):
     common_sigma: NotNegative = 0.2
     barometer_sigma: Positive = 0.3
     barometer_distance: Positive = 1.0
-    pressure: list[Literal["own", "neighbours"]] = Field(["own", "neighbours"], min_length=1)
+    pressure: list[Literal["own", "neighbours", "grid", "climatology"]] = Field(
+        ["own", "neighbours", "grid", "climatology"], min_length=1
+    )
+    pressure_sigma_limit: Positive = 2.0
+    grid_sigma: Positive = 1.2
+    grid_gap: Duration = timedelta(hours=6)
+    climatology_in_fields: bool = False
 
     @property
     def mean_temperature_model(self) -> MeanTemperature:

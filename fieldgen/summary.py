@@ -10,6 +10,7 @@ from rich.text import Text
 from fieldgen.readers.network import Network, ReadingReport
 from fieldgen.report import DayReport, RunReport
 from fieldgen.station.screening import STATION_FLAGS
+from fieldgen.station.surface_air import PRESSURE_SOURCES
 from fieldgen.text_table import new_table, render
 
 DAYS_SHOWN = 10
@@ -28,6 +29,7 @@ def format_run(run: RunReport) -> str:
         _render(_station_table(run)),
         _render(_day_table(run.days)),
         _format_totals(totals),
+        _format_sources(totals["pressure_sources"]),
         f"{totals['files_written']} files written to {run.folder}",
     ]
     return "\n".join(part for part in parts if part)
@@ -47,9 +49,16 @@ def format_check(network: Network, stations: xr.Dataset) -> str:
         f"terrain   {ground.min():.0f} to {ground.max():.0f} m in the mean of a cell, "
         f"{network.terrain.is_sea.mean():.0%} sea",
         f"stations  {len(heights)}, {heights.min():.0f} to {heights.max():.0f} m orthometric",
-        f"weather   {network.weather.sizes['site']} barometers",
+        f"weather   {network.weather.sizes['site']} barometers, "
+        f"{'no' if network.weather_grid is None else 'with'} weather grids",
         f"steps     {len(time)}, stamped {_minute(time[0])} to {_minute(time[-1])} UTC",
         f"usable    {usable:.1%} of the stations' values before they are compared with each other",
+        _format_sources(
+            {
+                source: int((stations.pressure_source.values == code).sum())
+                for source, code in PRESSURE_SOURCES.items()
+            }
+        ),
     ]
     barometers = [
         f"barometer {site}: contradicts the others in {count} steps"
@@ -59,6 +68,12 @@ def format_check(network: Network, stations: xr.Dataset) -> str:
         if count
     ]
     return "\n".join([*lines, _format_reading(report), *barometers]).rstrip()
+
+
+def _format_sources(counts: dict[str, int]) -> str:
+    """How many values each source of pressure served."""
+    served = [f"{count} {source}" for source, count in counts.items() if count]
+    return f"pressure  {', '.join(served)}"
 
 
 def _minute(time) -> str:

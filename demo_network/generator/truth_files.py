@@ -83,3 +83,41 @@ def write_station_air(path, sites, hourly):
         for name in quantities
     }
     dataset.to_netcdf(path, encoding={**encoding, "time": TIME})
+
+
+MODEL = {  # unit, CF standard name, meaning, step of packing, offset
+    "surface_pressure": (
+        "hPa",
+        "surface_air_pressure",
+        "pressure at the model's surface",
+        0.02,
+        850,
+    ),
+    "temperature": ("K", "air_temperature", "temperature 2 m above the model's surface", 0.01, 280),
+    "tm": ("K", "", "mean temperature of the atmosphere weighted by water vapour", 0.01, 280),
+    "surface_height": ("m", "surface_altitude", "height of the model's surface", 0.1, 0),
+}
+
+
+def write_model_weather(path, states, moments, longitude, latitude):
+    """Gridded weather as models give it: CF NetCDF on longitude and latitude."""
+    variables, encoding = {}, {"time": {**TIME, "dtype": "int32"}}
+    for name, (unit, standard_name, meaning, step, offset) in MODEL.items():
+        dims = ("time", "latitude", "longitude")[-states[name].ndim :]
+        attributes = {"units": unit, "long_name": meaning}
+        if standard_name:
+            attributes["standard_name"] = standard_name
+        variables[name] = (dims, states[name], attributes)
+        packing = {"scale_factor": step, "add_offset": float(offset), "_FillValue": -32768}
+        encoding[name] = {**COMPRESSED, "dtype": "int16", **packing}
+    axes = {
+        "time": ("time", moments, {"standard_name": "time"}),
+        "latitude": (
+            "latitude", latitude, {"standard_name": "latitude", "units": "degrees_north"}
+        ),
+        "longitude": (
+            "longitude", longitude, {"standard_name": "longitude", "units": "degrees_east"}
+        ),
+    }  # fmt: skip
+    title = {"title": "Invented weather model of the demo network", "Conventions": "CF-1.8"}
+    xr.Dataset(variables, axes, title).to_netcdf(path, encoding=encoding)

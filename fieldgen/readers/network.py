@@ -15,12 +15,14 @@ from fieldgen.errors import InputError
 from fieldgen.ground.grid import Grid, read_grid
 from fieldgen.ground.terrain import Terrain, read_terrain
 from fieldgen.readers.formats import read_delays, read_weather
+from fieldgen.readers.height_checks import check_barometers
 from fieldgen.readers.identities import Identities, tell_apart
 from fieldgen.readers.places import locate_sites, locate_stations, report_climbs, rows_of_codes
 from fieldgen.readers.pool import Pool, drop_far_epochs, oldest_first
 from fieldgen.readers.records import DelayRecords, ReadingReport, Records, WeatherRecords
 from fieldgen.readers.tables import StationRow, read_station_table
 from fieldgen.readers.time_grid import TimeGrid, spikes, step_means
+from fieldgen.readers.weather_grids import read_weather_grid, weather_on_steps
 from fieldgen.settings import Settings, read_settings
 
 ODD_PRESSURE = 60.0
@@ -44,6 +46,8 @@ class Network:
     delays : Dataset (time, station): ztd, ztd_sigma [m], pwv, pwv_sigma [kg m-2]
     weather : Dataset (time, site): pressure [hPa], temperature [K], relative_humidity [%], with
         the site's longitude, latitude, orthometric_height
+    weather_grid : Dataset (time, station) of what weather grids say at the antennas, see
+        `fieldgen.readers.weather_grids.weather_on_steps`; None where no grid is named
     """
 
     settings: Settings
@@ -53,6 +57,7 @@ class Network:
     delays: xr.Dataset
     weather: xr.Dataset
     report: ReadingReport
+    weather_grid: xr.Dataset | None = None
 
 
 def read_network(path: str | Path, progress: Callable[[str], None] = lambda file: None) -> Network:
@@ -73,23 +78,63 @@ def read_network(path: str | Path, progress: Callable[[str], None] = lambda file
     stations = locate_stations(settings, grid, named, report)
     sites = locate_sites(settings, sites_named, stations, report)
     report_climbs(settings, stations, sites, report)
-    if not sites.sizes["site"]:
-        report.warnings.append(
-            "no barometer: delays in metres cannot become water vapour. Name weather files in "
-            "stations.weather."
-        )
     time = _time_grid(settings, delays, stations.sizes["station"])
-    gridded_weather = _grid_weather(weather, sites, time, report)
-    _report_odd_pressures(gridded_weather, report)
+    grids = _read_grids(settings, stations, sites, time, report, progress)
+    gridded = _grid_weather(weather, sites, time, report)
+    _report_odd_pressures(gridded, report)
+    if grids is not None:
+        count = stations.sizes["station"]
+        known = stations.undulation.values[np.isfinite(stations.undulation.values)]
+        undulation = float(np.median(known)) if len(known) else np.nan
+        check_barometers(gridded, grids.isel(place=slice(count, None)), undulation, report)
+        grids = grids.isel(place=slice(count)).rename(place="station")
+    elif not sites.sizes["site"]:
+        report.warnings.append(
+            "no barometer and no weather grid: pressure can only be climatological, which the "
+            "fields do not use unless retrieval.climatology_in_fields is set. Name weather files "
+            "in stations.weather or stations.grids."
+        )
     return Network(
         settings=settings,
         grid=grid,
         terrain=terrain,
         stations=stations,
         delays=_grid_delays(settings, delays, stations, time, report),
-        weather=gridded_weather,
+        weather=gridded,
         report=report,
+        weather_grid=grids,
     )
+
+
+def _read_grids(settings: Settings, stations, sites, time: TimeGrid, report, progress):
+    """What weather grids say at the antennas, then at the barometers, Dataset (time, place); None
+    where no grid is named. Antennas that they do not cover are reported."""
+    if not settings.stations.grids:
+        return None
+    longitude, latitude = (
+        np.concatenate([stations[name].values, sites[name].values])
+        for name in ("longitude", "latitude")
+    )
+    read = partial(read_weather_grid, longitude=longitude, latitude=latitude)
+    records = list(_read_files(settings, "grids", read, report, progress))
+    gap = np.timedelta64(int(settings.retrieval.grid_gap.total_seconds()), "s")
+    found = weather_on_steps(records, len(longitude), time.stamps, time.step, gap)
+    known = np.isfinite(found.pressure.values)[:, : stations.sizes["station"]]
+    outside = ~known.any(axis=0)
+    if not known.any():
+        report.warnings.append(
+            "weather grids: give no pressure at any antenna and step. They need surface pressure "
+            "with the height of the model's surface, or sea-level pressure, around the stations."
+        )
+    elif outside.any():
+        ids = ", ".join(stations.station.values[outside])
+        report.warnings.append(f"weather grids: do not cover {outside.sum()} stations: {ids}")
+    if known.any() and (silent := int((~known.any(axis=1)).sum())):
+        report.warnings.append(
+            f"weather grids: give no pressure in {silent} of {len(known)} steps, which no two "
+            "fields within retrieval.grid_gap surround"
+        )
+    return found.assign_coords(time=time.stamps.astype("datetime64[ns]"))
 
 
 def _check_lines(settings: Settings) -> None:

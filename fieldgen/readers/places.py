@@ -12,6 +12,7 @@ from fieldgen.ground.geoid import undulation
 from fieldgen.ground.grid import Grid
 from fieldgen.ground.terrain import read_raster_at
 from fieldgen.kriging.covariance import chord_positions, distances
+from fieldgen.readers.height_checks import SAME_HEIGHT, Heights, check_listed, check_terrain
 from fieldgen.readers.identities import Identities
 from fieldgen.readers.records import ReadingReport, Records, Site
 from fieldgen.readers.tables import StationRow
@@ -20,9 +21,6 @@ from fieldgen.station.surface_air import Sites, own_barometer
 
 SAME_PLACE = 1.0
 """Two positions of one station further apart than this [km] are reported."""
-
-SAME_HEIGHT = 5.0
-"""A listed orthometric height this far [m] from ellipsoidal - undulation is reported."""
 
 SUSPICIOUS_CLIMB = 50.0
 """An antenna this much [m] above or below its own barometer is reported."""
@@ -56,20 +54,30 @@ def locate_stations(
         raise InputError("stations: no station has coordinates. Give stations.table.")
     column = _columns(rows)
     by_table = np.array([station in named.rows for station in rows])
-    ellipsoidal, orthometric = _heights(settings, list(rows), column, by_table, report)
+    heights = _heights(
+        settings, list(rows), column, by_table, report,
+        {"stations.table": np.where(by_table, column["orthometric_height"], np.nan),
+         "the delay files": np.array([named.sites[station].msl_height for station in rows])},
+    )  # fmt: skip
     stations = xr.Dataset(
         {
             "longitude": ("station", column["longitude"]),
             "latitude": ("station", column["latitude"]),
-            "ellipsoidal_height": ("station", ellipsoidal),
-            "orthometric_height": ("station", orthometric),
+            "ellipsoidal_height": ("station", heights.ellipsoidal),
+            "orthometric_height": ("station", heights.used),
+            "undulation": ("station", heights.undulation),
             "name": ("station", np.array([r.name or r.id for r in rows.values()], dtype=object)),
         },
         coords={"station": np.array(list(rows), dtype=object)},
     )
     near = _near_grid(settings, grid, stations, report)
     _check_reference_height(settings, near)
-    return _with_terrain(settings, near, report)
+    near = _with_terrain(settings, near, report)
+    used = Heights(
+        near.orthometric_height.values, near.ellipsoidal_height.values, near.undulation.values
+    )
+    check_terrain(used, near.terrain_height.values, report)
+    return near
 
 
 def rows_of_codes(tables: list[Records], table: dict[str, StationRow]) -> dict[str, StationRow]:
@@ -140,16 +148,21 @@ def _columns(rows: dict[str, StationRow]) -> dict[str, np.ndarray]:
     }
 
 
-def _heights(settings: Settings, ids: list[str], column, trusted, report: ReadingReport):
-    """Ellipsoidal and orthometric heights (n,) [m], each made from the other where it is missing.
+def _heights(
+    settings: Settings, ids: list[str], column, trusted, report: ReadingReport, lists
+) -> Heights:
+    """Heights (n,) [m], ellipsoidal and orthometric each made from the other where it is missing.
 
     A listed orthometric height counts where `trusted` (n,) or where nothing else is known: in
-    delay files its geoid is often wrong, in sign or altogether. Both are compared.
+    delay files its geoid is often wrong, in sign or altogether. Both are compared, first all of the
+    heights (n,) of each of the `lists`, by the name of who lists them.
     """
     geoid_height = _undulation(settings, column)
     listed = column["orthometric_height"]
-    computed = column["ellipsoidal_height"] - geoid_height
-    for index in np.flatnonzero(np.abs(listed - computed) > SAME_HEIGHT):
+    ellipsoidal = column["ellipsoidal_height"]
+    computed = ellipsoidal - geoid_height
+    explained = check_listed(Heights(computed, ellipsoidal, geoid_height), lists, report)
+    for index in np.flatnonzero((np.abs(listed - computed) > SAME_HEIGHT) & ~explained):
         report.warnings.append(
             f"{ids[index]}: its listed height above sea level is {listed[index]:.1f} m, but "
             f"ellipsoidal height less undulation is {computed[index]:.1f} m; the "
@@ -163,8 +176,8 @@ def _heights(settings: Settings, ids: list[str], column, trusted, report: Readin
             f"{np.isnan(orthometric).sum() - 1} more. Set terrain.geoid, or give "
             "orthometric_height or undulation in stations.table."
         )
-    ellipsoidal = column["ellipsoidal_height"]
-    return np.where(np.isfinite(ellipsoidal), ellipsoidal, orthometric + geoid_height), orthometric
+    filled = np.where(np.isfinite(ellipsoidal), ellipsoidal, orthometric + geoid_height)
+    return Heights(orthometric, filled, geoid_height)
 
 
 def _undulation(settings: Settings, column):
@@ -258,12 +271,15 @@ def locate_sites(
         else:
             rows[name] = row
     column = _columns(rows)
-    _, orthometric = _heights(settings, list(rows), column, np.ones(len(rows), bool), report)
+    heights = _heights(
+        settings, list(rows), column, np.ones(len(rows), bool), report,
+        {"the weather files": column["orthometric_height"]},
+    )  # fmt: skip
     return xr.Dataset(
         {
             "longitude": ("site", column["longitude"]),
             "latitude": ("site", column["latitude"]),
-            "orthometric_height": ("site", orthometric),
+            "orthometric_height": ("site", heights.used),
         },
         coords={"site": np.array(list(rows), dtype=object)},
     )

@@ -23,6 +23,7 @@ STATION_FLAGS = {
     "jump": 16,
     "disagrees_with_neighbours": 32,
     "condemned": 64,
+    "climatological_pressure": 128,
     "frozen": 256,
     "above_saturation": 512,
     "level_shift": 1024,
