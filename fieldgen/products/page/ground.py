@@ -82,7 +82,7 @@ def _project(grid: MapGrid, longitude, latitude) -> np.ndarray:
 
 
 def _label(grid: MapGrid, line: np.ndarray, across: int, text: str, labels: list) -> None:
-    """Add a label where a line crosses the lower (across 1) or left (0) edge, unless in a corner."""
+    """Add a label where a line crosses the lower (across 1) or left (0) edge, not in a corner."""
     half = np.array(grid.size) / 2
     line = line[np.argsort(line[:, across])]
     along = np.interp(-half[across], line[:, across], line[:, 1 - across])

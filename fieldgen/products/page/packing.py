@@ -1,8 +1,8 @@
 """Arrays as text for the browser; ``unpack.js`` undoes it.
 
-An array is counted in whole steps, 16 bits each, differenced along every axis (modulo 2^16, so that
-nothing is lost), its low bytes put before its high bytes, deflated and written in base64. Fields are
-smooth in time and space: most differences are a step or two.
+An array is counted in whole steps, 16 bits each, differenced along every axis (modulo 2^16, so
+that nothing is lost), its low bytes put before its high bytes, deflated and written in base64.
+Fields are smooth in time and space: most differences are a step or two.
 """
 
 from __future__ import annotations

@@ -197,12 +197,13 @@ function buildLegend(content) {
   add("missing", content.missing.words);
 }
 
-// Arrow keys and so on, unless a control that needs them itself has the focus.
+// Keys that move through the hours, unless the threshold's slider has the focus, which needs them
+// itself; up and down are left to the layers' buttons.
 function onKey(event) {
   const focus = document.activeElement;
-  const needsKeys = focus?.matches?.("input:not(#time):not([type=checkbox])");
+  const needsKeys = focus?.matches?.("#threshold");
   if (event.ctrlKey || event.altKey || event.metaKey || needsKeys) return;
-  if (event.key === " " && focus?.matches?.("button, input[type=checkbox]")) return;
+  if (event.key === " " && focus?.matches?.("button, input")) return;
   const action = {
     ArrowLeft: () => setHour(state.hour - 1),
     ArrowRight: () => setHour(state.hour + 1),
