@@ -33,6 +33,9 @@ FONT = "system-ui, 'DejaVu Sans', sans-serif"
 GLYPH_FONT = value(FONT)  # or Bokeh takes it for the name of a column
 BAND_COLOUR, LINE_COLOUR = "#c3d3e0", "#22577a"
 NOW_COLOUR = "#c2410c"
+SMALL_TOOLBAR = ":host { height: 140px !important; opacity: 1 !important; }"
+NO_OUTLINE = ".bk-Canvas { --outline-width: 0px; }"
+"""Styles: the tools cover their corner only, and no dots frame a figure that was clicked."""
 RIVER_EDGE = "#5f93b3"  # shows rivers on light layers
 
 HATCH_PATTERNS = {
@@ -87,6 +90,8 @@ def _draw_map(figures: Figures, grid: MapGrid, outlines) -> None:
     )
     plot.toolbar.logo = None
     plot.toolbar.autohide = True
+    plot.toolbar.stylesheets = [SMALL_TOOLBAR]
+    plot.stylesheets = [NO_OUTLINE]
     plot.axis.visible = False
     plot.grid.visible = False
     _draw_cells(figures, plot, grid)
@@ -211,6 +216,7 @@ def _draw_series(figures: Figures) -> None:
         y_axis_label=look.PWV_LABEL,
         output_backend="canvas",
     )
+    plot.stylesheets = [NO_OUTLINE]
     _style_axes(plot)
     band = figures.source("band", "start", "end", "low", "high")
     line = figures.source("line", "time", "pwv")

@@ -4,6 +4,9 @@
 const FRAME = 700; // between hours while playing [ms]
 let playing = null;
 
+state.content = JSON.parse(element("content").textContent);
+const unpacking = unpackAll(state.content.arrays); // while Bokeh draws its figures
+
 const fieldgenPage = {
   state,
   ready: false,
@@ -11,13 +14,13 @@ const fieldgenPage = {
   async start(models) {
     if (state.models) return;
     state.models = models;
-    state.content = JSON.parse(element("content").textContent);
-    state.arrays = await unpackAll(state.content.arrays);
+    state.arrays = await unpacking;
     state.newest = newestHour(state.content, state.arrays);
     state.hour = Math.max(state.newest, 0);
     state.threshold = state.content.threshold.first;
     state.place = { cell: firstCell() };
     buildControls();
+    letFingersScroll(document);
     showLayer();
     showHour();
     showSeries();
@@ -61,6 +64,14 @@ function firstCell() {
   let nearest = 0;
   for (let cell = 1; cell < cellCount(); cell++) if (away(cell) < away(nearest)) nearest = cell;
   return nearest;
+}
+
+// Let a finger on a figure scroll the page: Bokeh keeps all touches for its own tools.
+function letFingersScroll(root) {
+  for (const one of root.querySelectorAll("*")) {
+    if (one.matches(".bk-events")) one.style.touchAction = "pan-y pinch-zoom";
+    if (one.shadowRoot) letFingersScroll(one.shadowRoot);
+  }
 }
 
 function setHour(hour) {
@@ -119,8 +130,8 @@ function showAge() {
   badge.classList.toggle("old", old);
   if (newest < 0) say("age", "Old data: no hour of this page has a field");
   else {
-    const stamp = `newest hour ended ${formatClock(content.end[newest], "UTC")} UTC`;
-    say("age", `${old ? "Old data: " : ""}${stamp}, ${formatAge(Math.max(age, 0))} ago`);
+    const stamp = `${old ? "Old data: n" : "N"}ewest hour ended ${formatClock(content.end[newest], "UTC")} UTC`;
+    say("age", `${stamp}, ${formatAge(Math.max(age, 0))} ago`);
   }
 }
 

@@ -18,6 +18,8 @@ SERIES = ("pwv", "pwv_sigma", "residual", "residual_sigma")
 PLACES = ("longitude", "latitude", "orthometric_height")
 
 _NEEDED_FIELDS = (*FIELDS, "terrain", "time_bnds", "station_count", "crs")
+_NEEDED_ATTRIBUTES = {"flag": ("flag_masks", "flag_meanings"), "crs": ("crs_wkt",)}
+_NEEDED_GLOBALS = ("project", "fieldgen_version")
 _NEEDED_STATIONS = (*SERIES, *PLACES, "flag", "station_id", "station_name", "time")
 
 
@@ -107,14 +109,23 @@ def _load(path: Path, needed, kind: str) -> xr.Dataset:
     except (OSError, ValueError, RuntimeError) as error:
         reason = getattr(error, "strerror", None) or "it is not NetCDF"
         raise InputError(f"{path}: cannot be read: {reason}.") from None
-    for name in needed:
-        if name not in dataset.variables:
-            raise InputError(f"{path}: variable {name} is missing, expected a file of {kind}.")
-    if "flag_masks" not in dataset["flag"].attrs:
-        raise InputError(f"{path}: flag_masks of flag is missing, expected a file of {kind}.")
+    for missing in _missing_parts(dataset, needed):
+        raise InputError(f"{path}: {missing} is missing, expected a file of {kind}.")
     if not dataset.sizes["time"]:
         raise InputError(f"{path}: hours are 0, expected at least 1.")
     return dataset
+
+
+def _missing_parts(dataset: xr.Dataset, needed) -> Iterator[str]:
+    """What a file lacks of the variables and attributes that are used."""
+    yield from (f"variable {name}" for name in needed if name not in dataset.variables)
+    yield from (f"attribute {name}" for name in _NEEDED_GLOBALS if name not in dataset.attrs)
+    for variable, attributes in _NEEDED_ATTRIBUTES.items():
+        if variable in needed:
+            held = dataset[variable].attrs
+            yield from (
+                f"attribute {name} of {variable}" for name in attributes if name not in held
+            )
 
 
 def _check_grids(days: list[tuple[Path, xr.Dataset]]) -> None:

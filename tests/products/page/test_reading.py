@@ -5,6 +5,7 @@ from datetime import timedelta
 
 import numpy as np
 import pytest
+import xarray as xr
 
 from fieldgen.cli import main
 from fieldgen.errors import InputError
@@ -55,6 +56,16 @@ def test_a_day_without_station_file_has_no_stations(invented):
     assert read_hours(invented, None).stations.sizes["station"] == 0
 
 
+def change(folder, spoil):
+    """Spoil the newest field file."""
+    path = folder / "fields/pwv_20260915.nc"
+    with xr.open_dataset(path) as fields:
+        fields.load()
+    spoil(fields)
+    path.unlink()
+    fields.to_netcdf(path)
+
+
 BAD = {
     "no folder": (lambda p: None, lambda p: p / "nothing", "holds no field files"),
     "no run.json": (lambda p: (p / "run.json").unlink(), None, "run.json: cannot be read"),
@@ -63,6 +74,18 @@ BAD = {
     ),
     "run.json cut short": (
         lambda p: (p / "run.json").write_text('{"colour'), None, "colour_limits is missing"
+    ),
+    "no name": (
+        lambda p: change(p, lambda fields: fields.attrs.pop("project")), None,
+        "attribute project is missing",
+    ),
+    "no terrain": (
+        lambda p: change(p, lambda fields: fields.__delitem__("terrain")), None,
+        "variable terrain is missing",
+    ),
+    "no meanings": (
+        lambda p: change(p, lambda fields: fields["flag"].attrs.pop("flag_meanings")), None,
+        "attribute flag_meanings of flag is missing",
     ),
     "no NetCDF": (
         lambda p: (p / "fields/pwv_20260915.nc").write_bytes(b"\0" * 99), None, "is not NetCDF"
