@@ -133,7 +133,7 @@ def _draw_cells(figures: Figures, plot, grid: MapGrid) -> None:
         location=(0, 0), padding=4, title=" ", title_text_font=FONT, title_text_font_size="15px",
         title_text_font_style="normal", title_text_color=look.INK_COLOUR,
         major_label_text_font=FONT, major_label_text_font_size="14px",
-        major_label_text_color=look.INK_COLOUR, ticker=BasicTicker(desired_num_ticks=8),
+        major_label_text_color=look.INK_COLOUR, ticker=BasicTicker(desired_num_ticks=6),
         major_tick_line_color=look.INK_COLOUR,
     )  # fmt: skip
     plot.add_layout(bar, "below")

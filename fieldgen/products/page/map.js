@@ -24,7 +24,7 @@ function showColourBar() {
 
 function layerTitle(layer) {
   return layer.kind === "probability"
-    ? `${layer.title} ${state.threshold} kg m⁻²`
+    ? `${layer.title} ${state.threshold}${SPACE}${UNIT}`
     : layer.title;
 }
 
@@ -153,7 +153,7 @@ function describePlace(x, y) {
   const layer = theLayer();
   const value = layerValues(content, arrays, layer, hour, state.threshold)(cell);
   const words = Number.isFinite(value)
-    ? `${formatNumber(value, layer.digits, layer.kind === "change")} ${layer.unit}`
+    ? `${formatNumber(value, layer.digits, layer.kind === "change")}${SPACE}${layer.unit}`
     : content.missing.words;
   return `${cellPlace(cell)}: ${words}${cellDoubts(cell)}`;
 }
@@ -181,7 +181,7 @@ function stationFacts(station) {
     arrays.station_residual.at(i), arrays.station_residual_sigma.at(i), 1, true);
   const reason = reasonsOf(content, arrays, station, hour);
   const facts = [];
-  if (value !== "–") facts.push(`${value} kg m⁻²`);
+  if (value !== "–") facts.push(`${value}${SPACE}${UNIT}`);
   if (residual !== "–") facts.push(`${residual} against the other stations`);
   if (reason) facts.push(`not used: ${reason}`);
   return facts.join("; ");

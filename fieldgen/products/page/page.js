@@ -100,7 +100,7 @@ function showHour() {
 
 function showLayer() {
   element("threshold-row").hidden = theLayer().kind !== "probability";
-  say("threshold-value", `${state.threshold} kg m⁻²`);
+  say("threshold-value", `${state.threshold}${SPACE}${UNIT}`);
   showColourBar();
 }
 

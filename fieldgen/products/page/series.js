@@ -91,7 +91,7 @@ function showPlaceWords() {
     const station = content.stations[place.station];
     say("place-title", `Station ${stationTitle(station)}`);
     const where = `${formatPlace(station.longitude, station.latitude)}, ${formatNumber(station.height, 0)} m`;
-    say("place-facts", `${where}. ${stationFacts(place.station)}`);
+    say("place-facts", `${where}; ${stationFacts(place.station)}`);
     showKey([["point", "used, ± standard error"], ["cross", "not used"],
              ["dashes", "what the other stations say"]]);
     return;
@@ -99,7 +99,7 @@ function showPlaceWords() {
   const i = hour * cellCount() + place.cell;
   const value = formatWithSigma(arrays.pwv.at(i), arrays.pwv_sigma.at(i), 2);
   say("place-title", "Precipitable water vapour at a place");
-  const words = value === "–" ? content.missing.words : `${value} kg m⁻²`;
+  const words = value === "–" ? content.missing.words : `${value}${SPACE}${UNIT}`;
   say("place-facts", `${cellPlace(place.cell)} (mean of the cell). ${words}${cellDoubts(place.cell)}`);
   showKey([["line", "mean over the cell and the hour"], ["band", "68 % band"]]);
 }

@@ -2,6 +2,8 @@
 // Numbers and times as words.
 
 const MINUS = "\u2212";
+const SPACE = "\u00a0"; // between what must stay on one line
+const UNIT = `kg${SPACE}m⁻²`;
 
 function formatNumber(value, digits, signed) {
   if (!Number.isFinite(value)) return "–";
@@ -13,7 +15,7 @@ function formatNumber(value, digits, signed) {
 
 function formatWithSigma(value, sigma, digits, signed) {
   const text = formatNumber(value, digits, signed);
-  return Number.isFinite(sigma) ? `${text} ± ${formatNumber(sigma, digits)}` : text;
+  return Number.isFinite(sigma) ? `${text}${SPACE}±${SPACE}${formatNumber(sigma, digits)}` : text;
 }
 
 function formatClock(seconds, zone) {

@@ -237,7 +237,7 @@ def test_click_gives_the_cells_series(opened, fields):
     np.testing.assert_array_equal(band["end"], stamps[known])
     facts = opened.text("place-facts")
     assert f"{fields['terrain'].values[row, column]:.0f} m" in facts
-    assert f"{pwv[-1]:.2f} ± {sigma[-1]:.2f}" in facts
+    assert f"{pwv[-1]:.2f} ± {sigma[-1]:.2f}" in facts.replace("\xa0", " ")
 
 
 def test_click_on_a_station_tells_used_from_rejected(opened, stations):
