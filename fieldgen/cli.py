@@ -11,11 +11,11 @@ import argparse
 import os
 import sys
 
-from fieldgen.commands import check, compare, make, score, status, update
+from fieldgen.commands import check, compare, make, page, score, status, update
 from fieldgen.commands.terminal import show
 from fieldgen.errors import FieldgenError
 
-COMMANDS = (make, update, status, check, score, compare)
+COMMANDS = (make, update, status, check, score, compare, page)
 """In the order of the help."""
 
 _DESCRIPTION = (

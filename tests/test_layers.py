@@ -37,7 +37,7 @@ MODULES = sorted(
     if path.name not in ("__init__.py", "__main__.py")
 )
 
-HEAVY = ("matplotlib", "cartopy", "pykrige", "rasterio", "xarray", "pandas", "scipy")
+HEAVY = ("matplotlib", "cartopy", "pykrige", "rasterio", "xarray", "pandas", "scipy", "bokeh")
 
 
 def level(module: str) -> int:

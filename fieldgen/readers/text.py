@@ -150,15 +150,10 @@ def decode(data: bytes) -> str:
 def read_lines(
     path, name: str, rejections: Rejections, size: int = CHUNK_BYTES
 ) -> Iterator[tuple[int, str]]:
-    """Line number (from 1) and text without its line ending of the lines that are not empty.
-
-    Lines too long are rejected.
-    """
+    """Line number (from 1) and text without its line ending; lines too long are rejected."""
     for chunk in read_chunks(path, name, size):
         lines = chunk.data.removesuffix(b"\n").split(b"\n")
         for number, line in enumerate(lines, chunk.first_line):
-            if not line:
-                continue
             if len(line) > LONGEST_LINE:
                 reject_long_line(rejections, name, number)
             else:

@@ -64,7 +64,7 @@ def says(records, sites: Sites, quantities) -> GridWeather:
     ]  # fmt: skip
     hour = np.timedelta64(3600, "s")
     found = weather_on_steps(
-        [type(records)(lasting)], len(sites.height), TIME + hour, hour, 6 * hour
+        [type(records)(records.file, lasting)], len(sites.height), TIME + hour, hour, 6 * hour
     )
     return GridWeather(*(found[name].values for name in GridWeather._fields))
 

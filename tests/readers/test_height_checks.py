@@ -193,7 +193,14 @@ def demo(folder, geoid, *, blank=True, grids=False):
         for row in rows:
             writer.writerow(row | ({"orthometric_height": ""} if blank else {}))
     text = (DEMO / "network.toml").read_text().replace("geoid = 57.3", f"geoid = {geoid}")
-    for name in ("delays", "weather", "terrain.tif", "coast.geojson", "rivers.geojson"):
+    for name in (
+        "delays",
+        "weather",
+        "terrain.tif",
+        "coast.geojson",
+        "rivers.geojson",
+        "catchments.geojson",
+    ):
         text = text.replace(f'"{name}', f'"{DEMO}/{name}')
     if grids:
         text = text.replace("[stations]", f'[stations]\ngrids = ["{DEMO}/weather_grid.nc"]')
