@@ -1,0 +1,24 @@
+"""Pictures in few colours, which keep those of the colour bar."""
+
+from __future__ import annotations
+
+import numpy as np
+from PIL import Image
+
+from fieldgen.products import look
+from fieldgen.products.maps.cells import colour_bytes, make_colour_map
+
+
+def make_palette(picture: Image.Image, count: int) -> Image.Image:
+    """Colours of a picture, and of all fields and words that may take its place."""
+    width, height = picture.size
+    shades = (255 * make_colour_map()(np.linspace(0, 1, width))[:, :3]).astype(np.uint8)
+    both = Image.new("RGB", (width, 2 * height), tuple(colour_bytes(look.MISSING_COLOUR).tolist()))
+    both.paste(picture, (0, 0))
+    both.paste(Image.fromarray(np.tile(shades, (height * 3 // 4, 1, 1))), (0, height))
+    return both.quantize(count, method=Image.Quantize.MEDIANCUT)
+
+
+def reduce_colours(picture: Image.Image, palette: Image.Image) -> Image.Image:
+    """A picture in the nearest colours of a palette."""
+    return picture.quantize(palette=palette, dither=Image.Dither.NONE)
