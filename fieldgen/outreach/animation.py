@@ -38,7 +38,7 @@ def animate(
 ) -> list[Path]:
     """Write a film of a period in one shape, and stills of its last hour in all shapes.
 
-    start, end : ISO 8601 in UTC; by default the newest three days
+    start, end : ISO 8601 in UTC; by default the newest three days; cut to what the folder holds
     Returns all files, each picture followed by its description. Raises InputError, OutputError.
     """
     if form == "mp4":
@@ -95,7 +95,7 @@ def read_period(folder: ProductFolder, start: str | None, end: str | None):
     first = parse_time(start) if start else last - DEFAULT_LENGTH
     if first >= last:
         raise InputError(f"period: start {first} is not before end {last}.")
-    last = min(last, folder.end)
+    first, last = max(first, folder.start), min(last, folder.end)
     if not any(step.field is not None for step in folder.read_steps(first, last)):
         raise InputError(
             f"{folder.path}: no field between {first} and {last}; the newest ends {folder.end}."

@@ -10,13 +10,16 @@ from fieldgen.products.maps.cells import colour_bytes, make_colour_map
 
 
 def make_palette(picture: Image.Image, count: int) -> Image.Image:
-    """Colours of a picture, and of all fields and words that may take its place."""
+    """Colours of a picture and of all fields that may take its place, and white as it is."""
     width, height = picture.size
     shades = (255 * make_colour_map()(np.linspace(0, 1, width))[:, :3]).astype(np.uint8)
     both = Image.new("RGB", (width, 2 * height), tuple(colour_bytes(look.MISSING_COLOUR).tolist()))
     both.paste(picture, (0, 0))
     both.paste(Image.fromarray(np.tile(shades, (height * 3 // 4, 1, 1))), (0, height))
-    return both.quantize(count, method=Image.Quantize.MEDIANCUT)
+    chosen = both.quantize(count - 1, method=Image.Quantize.MEDIANCUT).getpalette()
+    palette = Image.new("P", (1, 1))
+    palette.putpalette([*chosen[: 3 * (count - 1)], *colour_bytes(look.PAPER_COLOUR).tolist()])
+    return palette
 
 
 def reduce_colours(picture: Image.Image, palette: Image.Image) -> Image.Image:

@@ -25,6 +25,9 @@ REPEATS = 3
 QUALITY = {"crf": "20", "preset": "veryfast"}
 """Of H.264: constant rate factor (lower is better), and effort."""
 
+BT709 = 1
+"""Number of the colours that players expect of large pictures (ITU-T H.273)."""
+
 GIF_SHARE = 0.5
 """Size of a GIF, against the shape's."""
 
@@ -58,11 +61,12 @@ def write_mp4(pictures: Iterator[Image.Image], path: Path, *, title: str, commen
             for picture, repeats in _with_repeats(pictures):
                 if stream is None:
                     stream = _add_stream(container, picture.size)
-                frame = av.VideoFrame.from_image(picture).reformat(format="yuv420p")
-                for count in range(count, count + repeats):
-                    frame.pts = count
+                frame = av.VideoFrame.from_image(picture).reformat(
+                    format="yuv420p", dst_colorspace=BT709, dst_color_range="MPEG"
+                )
+                for frame.pts in range(count, count + repeats):
                     container.mux(stream.encode(frame))
-                count += 1
+                count += repeats
             container.mux(stream.encode())
 
 
@@ -71,6 +75,9 @@ def _add_stream(container, size: tuple[int, int]):
     stream = container.add_stream("libx264", rate=rate, options=QUALITY)
     stream.width, stream.height = size
     stream.pix_fmt = "yuv420p"
+    context = stream.codec_context
+    context.colorspace = context.color_primaries = context.color_trc = BT709
+    context.color_range = 1  # from 16 to 235
     stream.time_base = stream.codec_context.time_base = Fraction(1, rate)
     return stream
 

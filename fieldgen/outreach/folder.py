@@ -30,6 +30,8 @@ class Step:
 class ProductFolder:
     """What `make` and `update` left in a folder.
 
+    start, end : of all fields in it; step : of time
+    newest : the field of the last step
     Raises InputError if it holds no field files.
     """
 
@@ -45,6 +47,8 @@ class ProductFolder:
             self.end = newest["time"].values[-1].astype("datetime64[s]")
         bounds = self.newest["time_bnds"].values[0].astype("datetime64[s]")
         self.step = bounds[1] - bounds[0]
+        with _open(self._files[min(self._files)]) as oldest:
+            self.start = oldest["time"].values[0].astype("datetime64[s]") - self.step
 
     @property
     def network_name(self) -> str:
@@ -158,8 +162,10 @@ def _may_hold(day: str, start, end) -> bool:
 def _open(file: Path) -> xr.Dataset:
     try:
         return xr.open_dataset(file)
-    except (OSError, ValueError) as error:
-        raise InputError(f"{file}: is not a NetCDF file that can be read ({error}).") from None
+    except (OSError, ValueError):
+        raise InputError(
+            f"{file}: is not a NetCDF file that can be read. Make its day anew."
+        ) from None
 
 
 def observed_at(stations: xr.Dataset, time: np.datetime64) -> tuple[np.ndarray, np.ndarray]:

@@ -67,8 +67,9 @@ def _clock(time: np.datetime64) -> str:
 def read_language(path: Path | None = None) -> Language:
     """The sentences of a file, or of one that comes with fieldgen, by its bare name.
 
-    Without a path, the sentences of the English template. Raises InputError that lists keys that are missing, unknown, not text, or fill in what there
-    is not.
+    Without a path, the sentences of the English template. Raises InputError that lists keys that
+    are missing, unknown, not text, or fill in what
+    there is not.
     """
     shipped = files("fieldgen.outreach").joinpath("languages")
     expected = tomllib.loads(shipped.joinpath(_TEMPLATE).read_text("utf-8"))

@@ -32,6 +32,7 @@ SEASONS_HEIGHT = 380  # more, where a year is shown [pixels]
 LETTERS = 110  # dots per inch
 LEFT, RIGHT = 85, 85  # margins [pixels]
 NETWORK_MARGIN = 0.06  # room below the lowest value for reasons without a value
+LEGEND_COLUMNS = 3
 NAME_LENGTH = 150  # of a file, in letters
 
 
@@ -269,7 +270,6 @@ def draw_small_print(figure: Figure, language: Language) -> None:
 
 def _draw_vapour(axes: Axes, series: Series, language: Language) -> None:
     """Used values with their band, the network's median, and values not used by reason."""
-    axes.set_title(language.say("station_vapour_explained"), size=look.TEXT_SIZE, pad=54)
     used, say = series.used, language.say
     style = {"color": look.NETWORK_COLOUR, "linewidth": 1.4, "linestyle": "--"}
     axes.plot(series.time, series.network, label=say("station_median"), **style)
@@ -279,18 +279,20 @@ def _draw_vapour(axes: Axes, series: Series, language: Language) -> None:
     style = {"color": look.SERIES_COLOUR, "linewidth": 1.8}
     axes.plot(series.time, used, label=say("station_value"), **style)
     _draw_reasons(axes, series, language)
-    axes.legend(
-        loc="lower left", bbox_to_anchor=(-0.01, 1.0), ncols=3, fontsize=look.VALUE_SIZE,
-        borderaxespad=0.2, columnspacing=1.4, handlelength=1.8,
+    legend = axes.legend(
+        loc="lower left", bbox_to_anchor=(-0.01, 1.0), ncols=LEGEND_COLUMNS,
+        fontsize=look.VALUE_SIZE, borderaxespad=0.2, columnspacing=1.4, handlelength=1.8,
     )  # fmt: skip
+    rows = -(-len(legend.get_texts()) // LEGEND_COLUMNS)
+    words = language.say("station_vapour_explained")
+    axes.set_title(words, size=look.TEXT_SIZE, pad=10 + 1.75 * look.VALUE_SIZE * rows)
     axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: language.number(value)))
 
 
 def _draw_reasons(axes: Axes, series: Series, language: Language) -> None:
     """A marker for each value not used, at the lower edge where it has none itself."""
     axes.margins(y=NETWORK_MARGIN)
-    low, high = axes.get_ylim()
-    without = np.full(len(series.time), low)
+    without = np.full(len(series.time), axes.get_ylim()[0])
     values = np.where(np.isfinite(series.pwv), series.pwv, without)
     for (key, count), marker in zip(series.counts.items(), look.REASON_MARKERS, strict=False):
         label = language.say("station_unused", reason=language.say(key), count=count)
