@@ -8,6 +8,8 @@ from PIL import Image
 from fieldgen.products import look
 from fieldgen.products.maps.cells import colour_bytes, make_colour_map
 
+NEARLY_WHITE = 244  # brighter colours become white, as paper is
+
 
 def make_palette(picture: Image.Image, count: int) -> Image.Image:
     """Colours of a picture and of all fields that may take its place, and white as it is."""
@@ -17,8 +19,10 @@ def make_palette(picture: Image.Image, count: int) -> Image.Image:
     both.paste(picture, (0, 0))
     both.paste(Image.fromarray(np.tile(shades, (height * 3 // 4, 1, 1))), (0, height))
     chosen = both.quantize(count - 1, method=Image.Quantize.MEDIANCUT).getpalette()
+    colours = np.reshape(chosen[: 3 * (count - 1)], (-1, 3))
+    colours[(colours > NEARLY_WHITE).all(axis=1)] = 255
     palette = Image.new("P", (1, 1))
-    palette.putpalette([*chosen[: 3 * (count - 1)], *colour_bytes(look.PAPER_COLOUR).tolist()])
+    palette.putpalette([*colours.ravel().tolist(), *colour_bytes(look.PAPER_COLOUR).tolist()])
     return palette
 
 

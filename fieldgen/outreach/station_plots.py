@@ -276,7 +276,8 @@ def _draw_vapour(axes: Axes, series: Series, language: Language) -> None:
     band = (used - series.sigma, used + series.sigma)
     style = {"color": look.BAND_COLOUR, "linewidth": 0, "alpha": 0.8}
     axes.fill_between(series.time, *band, label=say("station_band"), **style)
-    style = {"color": look.SERIES_COLOUR, "linewidth": 1.8}
+    # the dots show values between two gaps
+    style = {"color": look.SERIES_COLOUR, "linewidth": 1.8, "marker": ".", "markersize": 5}
     axes.plot(series.time, used, label=say("station_value"), **style)
     _draw_reasons(axes, series, language)
     legend = axes.legend(
@@ -309,7 +310,8 @@ def _draw_reasons(axes: Axes, series: Series, language: Language) -> None:
 
 def _draw_delay(axes: Axes, series: Series, language: Language) -> None:
     axes.set_title(language.say("station_delay_explained"), size=look.TEXT_SIZE, pad=10)
-    axes.plot(series.time, series.ztd, color=look.SERIES_COLOUR, linewidth=1.6)
+    axes.plot(series.time, series.ztd, color=look.SERIES_COLOUR, linewidth=1.6, marker=".",
+              markersize=5)  # fmt: skip
     axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: language.number(value, 3)))
 
 

@@ -68,7 +68,7 @@ def test_describe_series_tells_the_values_used():
     words = describe_series(series(REASONS | {47: "reason_no_delay"}), ENGLISH)
     assert "Steps with a used value: 43 of 48. They run from 20.0 to 31.5 kg" in words
     assert "Not used: station not trusted 1; sudden jump 2; no air pressure 1." in words
-    none = describe_series(series({slice(None): "reason_condemned"}), ENGLISH)
+    none = describe_series(series(dict.fromkeys(range(48), "reason_condemned")), ENGLISH)
     assert "No value of the station was used" in none
 
 
