@@ -213,9 +213,8 @@ class Poster(CellPainter):
             pwv, flag = field["pwv"].values, field["flag"].values
         picture = np.array(self.paint_field(pwv, self._merge_flags(flag)).convert("RGBA"))
         self.over_map.lay_on(picture)
-        page = self.base.copy()
-        page[self._map_window] = picture
-        return draw_over(page, self.figure, self._hourly_artists(pwv, observed, words, share))
+        self.base[self._map_window] = picture  # all else stays as it is
+        return draw_over(self.base, self.figure, self._hourly_artists(pwv, observed, words, share))
 
     def _hourly_artists(self, pwv, observed, words: str, share: float) -> list:
         self.clock.set_text(words)
