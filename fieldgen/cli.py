@@ -11,11 +11,22 @@ import argparse
 import os
 import sys
 
-from fieldgen.commands import check, compare, make, page, score, status, update
+from fieldgen.commands import (
+    animate,
+    check,
+    compare,
+    make,
+    page,
+    score,
+    sheet,
+    stations,
+    status,
+    update,
+)
 from fieldgen.commands.terminal import show
 from fieldgen.errors import FieldgenError
 
-COMMANDS = (make, update, status, check, score, compare, page)
+COMMANDS = (make, update, status, check, score, compare, page, animate, stations, sheet)
 """In the order of the help."""
 
 _DESCRIPTION = (

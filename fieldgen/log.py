@@ -18,6 +18,7 @@ EVENTS = {
     "day_begun": "day {day} is to be made: {reason}",
     "day_made": "day {day} made: {made} of {steps} steps, {files} files",
     "day_kept": "day {day} is kept as it is: the input of its first hours is gone",
+    "page_not_made": "the page is not made: {reason}",
     "update_done": "done in {seconds:.1f} s: {made} days made, {unchanged} unchanged",
     "failed": "{reason}",
 }

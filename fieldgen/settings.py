@@ -292,6 +292,7 @@ class ProductsTable(_Table):
     limits: Annotated[tuple[Limit, Limit], AfterValidator(_check_ascending)] | Literal["auto"] = (
         "auto"
     )
+    page: Duration | Literal["none"] = timedelta(hours=48)
     coast: FilePath | None = None
     rivers: FilePath | None = None
     catchments: FilePath | None = None

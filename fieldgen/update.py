@@ -10,7 +10,7 @@ from pathlib import Path
 
 from fieldgen.chain import finish_run, make_days, maps_of_day, pieces_of
 from fieldgen.day_maker import DayMaker, DayWriter, Task, colour_limits
-from fieldgen.errors import FieldgenError
+from fieldgen.errors import FieldgenError, InputError
 from fieldgen.log import Log
 from fieldgen.period import Piece
 from fieldgen.products.atomic import whole_file
@@ -23,6 +23,8 @@ from fieldgen.upkeep.lock import STATE, hold
 
 OUTCOME = "last_update.json"
 """File, in the folder's state, that says how the last update ended."""
+
+PAGE = "page.html"
 
 
 def update(path: str | Path, folder: Path, *, jobs: int = 1, log: Log) -> list[str]:
@@ -75,6 +77,7 @@ def _update_held(
             files=len(report.files),
         )
     finish_run(plan.writer, [reports[day] for day in sorted(reports)])
+    _write_page(settings, folder, log)
     write_inputs(folder, inputs, sorted(reports))
     log.info(
         "update_done",
@@ -87,11 +90,25 @@ def _update_held(
 
 def _stands(folder: Path, settings: Settings, days: list[str]) -> bool:
     """Whether every file of these days is there, and what belongs to all of them."""
-    products = ["run.json"] + ["maps/latest.png"] * (settings.products.maps != "none")
+    products = ["run.json"]
+    products += ["maps/latest.png"] * (settings.products.maps != "none")
+    products += [PAGE] * (settings.products.page != "none")
     records = [read_day_record(folder, day) for day in days]
     return all((folder / name).is_file() for name in products) and all(
         record is not None and record.lost_file(folder) is None for record in records
     )
+
+
+def _write_page(settings: Settings, folder: Path, log: Log) -> None:
+    """Write the forecaster's page anew; that it cannot be made does not stop the run."""
+    if settings.products.page == "none":
+        return
+    from fieldgen.products.page import write_page
+
+    try:
+        write_page(folder, folder / PAGE, settings.products.page)
+    except InputError as error:
+        log.warning("page_not_made", reason=str(error))
 
 
 def _log_reading(network: Network, log: Log) -> None:

@@ -29,6 +29,7 @@ file = "terrain.tif"
 geoid = 57.0
 [products]
 maps = "none"
+page = "none"
 """
 
 START = np.datetime64("2026-03-01T00:00:00", "s")

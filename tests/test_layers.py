@@ -25,7 +25,7 @@ LAYERS = [
     ["day_maker"],
     ["chain", "summary", "progress", "text_table", "scoring"],
     ["log", "update", "status"],
-    ["comparing"],
+    ["comparing", "outreach"],
     ["commands"],
     ["cli"],
 ]

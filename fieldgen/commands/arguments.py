@@ -35,10 +35,10 @@ def add_products(parser: argparse.ArgumentParser) -> None:
     )
 
 
-def add_period(parser: argparse.ArgumentParser) -> None:
+def add_period(parser: argparse.ArgumentParser, default: str = "all hours of the input") -> None:
     """Start and end of a period."""
     parser.add_argument("--start", metavar="T", help="first instant, ISO 8601 in UTC")
-    parser.add_argument("--end", metavar="T", help="last instant; default: all hours of the input")
+    parser.add_argument("--end", metavar="T", help=f"last instant; default: {default}")
 
 
 def add_folder(parser: argparse.ArgumentParser) -> None:
@@ -46,6 +46,19 @@ def add_folder(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
         "--out", metavar="FOLDER", type=Path, help="default: outputs/<network name>"
     )
+
+
+def add_public_folder(parser: argparse.ArgumentParser) -> None:
+    """The folder of pictures made from products."""
+    parser.add_argument("--out", metavar="OUT", type=Path, help="default: FOLDER/public")
+
+
+def add_language(parser: argparse.ArgumentParser) -> None:
+    """The file of sentences."""
+    parser.add_argument(
+        "--language", metavar="FILE.toml", type=Path,
+        help="the sentences to use, or german (default: english)",
+    )  # fmt: skip
 
 
 def add_jobs(parser: argparse.ArgumentParser) -> None:
@@ -77,6 +90,11 @@ def duration(text: str) -> timedelta:
 def product_folder(options: argparse.Namespace, settings) -> Path:
     """The folder that is asked for, or that of the network's name."""
     return options.out or Path("outputs") / folder_name(settings.network.name)
+
+
+def public_folder(options: argparse.Namespace) -> Path:
+    """The folder that is asked for, or `public` in that of the products."""
+    return options.out or options.folder / "public"
 
 
 def folder_name(name: str) -> str:

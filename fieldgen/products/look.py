@@ -58,3 +58,30 @@ HATCHES = {
     ),
 }
 """Lines rising to the right, dots in staggered rows, lines falling to the right."""
+
+PUBLIC_HATCH = Hatch(
+    "", lambda row, column: ((row + 6) % 12 < 3) & ((column + (row + 6) // 12 % 2 * 6) % 12 < 3)
+)
+"""Dots for all cells that carry a flag of `HATCHES`, large enough for a small screen."""
+
+SERIES_COLOUR, BAND_COLOUR, NETWORK_COLOUR = "#224779", "#a9c3da", "#8a6d3b"
+"""Of plots over time: a station, its error band, and all stations together."""
+
+REASON_MARKERS = ("x", "^", "v", "s", "D", "P", "*")
+REASON_COLOUR = "#b5471b"
+"""Of values not used, apart from the colours of plots to the colour-blind and in a grey print."""
+
+PLOT_STYLE = {
+    "font.family": FONT_FAMILY,
+    "font.size": TEXT_SIZE,
+    "axes.titlelocation": "left",
+    "axes.spines.top": False,
+    "axes.spines.right": False,
+    "axes.edgecolor": QUIET_COLOUR,
+    "axes.axisbelow": True,
+    "axes.grid": True,
+    "grid.color": MISSING_COLOUR,
+    "text.parse_math": False,
+    "legend.frameon": False,
+}
+"""Settings of matplotlib for plots over time."""

@@ -3,11 +3,48 @@
 from __future__ import annotations
 
 import numpy as np
-from matplotlib.colors import LightSource, LinearSegmentedColormap, to_rgb
+from matplotlib.colors import LightSource, LinearSegmentedColormap, Normalize, to_rgb
 from PIL import Image
 
 from fieldgen.products import look
 from fieldgen.products.maps.grid import MapGrid
+
+
+class CellPainter:
+    """The cells of a field as pixels, in the same colours in all hours.
+
+    grid : of all hours to come; flag_bits : flag meaning -> bit
+    limits : colour limits [kg m-2]; values beyond take the colours of the ends
+    shape : rows and columns of the pixels
+    hatches : flag meaning -> `look.Hatch`
+    """
+
+    def __init__(self, grid: MapGrid, flag_bits: dict, limits, shape, hatches=look.HATCHES):
+        self.grid = grid
+        self.flag_bits = flag_bits
+        self.shape = shape
+        self.colours = make_colour_map()
+        self.norm = Normalize(*limits, clip=True)
+        self.relief = shade_relief(grid)
+        self.hatches = {meaning: ink_hatch(hatch, shape) for meaning, hatch in hatches.items()}
+
+    def paint_field(self, pwv: np.ndarray, flag: np.ndarray) -> Image.Image:
+        """The field of one hour as pixels.
+
+        pwv : precipitable water vapour (y, x) [kg m-2]; NaN is painted in `look.MISSING_COLOUR`
+        flag : bit mask (y, x); cells with a flag of the hatches are hatched unless missing
+        """
+        missing = np.isnan(pwv)
+        cells = self.colours(self.norm(pwv))[..., :3] * self.relief[..., np.newaxis]
+        cells[missing] = to_rgb(look.MISSING_COLOUR)
+        cells = (255 * np.clip(cells, 0, 1) + 0.5).astype(np.uint8)
+        picture = Image.fromarray(enlarge_cells(cells, self.shape))
+        for meaning, (ink, cover) in self.hatches.items():
+            flagged = (flag & self.flag_bits[meaning] != 0) & ~missing
+            if flagged.any():
+                mask = cover * enlarge_cells(flagged, self.shape)
+                picture.paste(ink, mask=Image.fromarray(mask))
+        return picture
 
 
 def make_colour_map() -> LinearSegmentedColormap:
@@ -49,7 +86,7 @@ def enlarge_cells(cells: np.ndarray, shape: tuple[int, int]) -> np.ndarray:
     """
     row = ((np.arange(shape[0]) + 0.5) / shape[0] * cells.shape[0]).astype(int)
     column = ((np.arange(shape[1]) + 0.5) / shape[1] * cells.shape[1]).astype(int)
-    return cells.take(row[::-1], axis=0).take(column, axis=1)
+    return cells.take(column, axis=1).take(row[::-1], axis=0)  # the costly one copies whole rows
 
 
 def ink_hatch(hatch: look.Hatch, shape: tuple[int, int]) -> tuple[Image.Image, np.ndarray]:

@@ -3,10 +3,12 @@
 from __future__ import annotations
 
 import matplotlib.style
+import numpy as np
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 from matplotlib.text import Text
 from matplotlib.transforms import IdentityTransform
+from PIL import Image
 
 from fieldgen.products import look
 from fieldgen.products.maps.grid import MapGrid
@@ -18,11 +20,11 @@ def drawing_style():
     return matplotlib.style.context(["default", {"font.family": look.FONT_FAMILY}])
 
 
-def make_figure(layout: Layout, grid: MapGrid):
+def make_figure(layout: Layout, grid: MapGrid, dots_per_inch: int = DOTS_PER_INCH):
     """A clear figure and the axes of its map, which fill the map box to the pixel."""
     width, height = layout.size
-    inches = width / DOTS_PER_INCH, height / DOTS_PER_INCH
-    figure = Figure(inches, DOTS_PER_INCH, facecolor="none")
+    inches = width / dots_per_inch, height / dots_per_inch
+    figure = Figure(inches, dots_per_inch, facecolor="none")
     FigureCanvasAgg(figure)
     axes = figure.add_axes(layout.fractions(layout.map_box), projection=grid.projection)
     axes.patch.set_visible(False)
@@ -36,3 +38,15 @@ def draw_words(figure: Figure, place, words: str, size: float = look.TEXT_SIZE, 
     return figure.text(
         *place, words, size=size, transform=IdentityTransform(), parse_math=False, **style
     )
+
+
+def draw_over(page, figure: Figure, artists) -> Image.Image:
+    """A page with artists of a figure drawn over it, in place of all that the canvas held.
+
+    page : picture, or array (row, column, 4)
+    """
+    pixels = np.asarray(figure.canvas.buffer_rgba())
+    pixels[...] = page
+    for artist in artists:
+        artist.draw(figure.canvas.get_renderer())
+    return Image.fromarray(pixels).convert("RGB")

@@ -4,12 +4,11 @@ from __future__ import annotations
 
 import numpy as np
 import xarray as xr
-from matplotlib.colors import Normalize, to_rgb
 from PIL import Image
 
 from fieldgen.products import look
-from fieldgen.products.maps.cells import enlarge_cells, ink_hatch, make_colour_map, shade_relief
-from fieldgen.products.maps.figure import drawing_style, make_figure
+from fieldgen.products.maps.cells import CellPainter
+from fieldgen.products.maps.figure import draw_over, drawing_style, make_figure
 from fieldgen.products.maps.grid import read_map_grid
 from fieldgen.products.maps.layout import plan_layout
 from fieldgen.products.maps.legend import draw_colour_bar, draw_legend
@@ -25,7 +24,7 @@ from fieldgen.products.maps.words import (
 )
 
 
-class MapPainter:
+class MapPainter(CellPainter):
     """A map whose base is drawn once and whose hours are painted over it.
 
     fields_like : a field dataset (time, y, x) with the grid, terrain and flags of all hours to come
@@ -36,17 +35,11 @@ class MapPainter:
     """
 
     def __init__(self, fields_like: xr.Dataset, *, network_name: str, limits, coast=(), rivers=()):
-        self.flag_bits = read_flag_bits(fields_like["flag"])
-        self.grid = read_map_grid(fields_like, self.flag_bits["sea"])
-        width, height = self.grid.size
+        flag_bits = read_flag_bits(fields_like["flag"])
+        grid = read_map_grid(fields_like, flag_bits["sea"])
+        width, height = grid.size
         self.layout = plan_layout(width / height)
-        self.colours = make_colour_map()
-        self.norm = Normalize(*limits, clip=True)
-        self.relief = shade_relief(self.grid)
-        self.hatches = {
-            meaning: ink_hatch(hatch, self.layout.map_shape)
-            for meaning, hatch in look.HATCHES.items()
-        }
+        super().__init__(grid, flag_bits, limits, self.layout.map_shape)
         with drawing_style():
             self._draw_base(network_name, fields_like.attrs["fieldgen_version"], coast, rivers)
             self.base = self._capture_base()
@@ -90,34 +83,7 @@ class MapPainter:
         marks.show(observed["pwv"].values, observed["flag"].values, self.colours, self.norm)
         self.time_text.set_text(format_hour(*read_hour_bounds(field)))
         self.facts_text.set_text(format_facts(field))
-        return self._draw_over(page, [*marks.artists, self.time_text, self.facts_text])
-
-    def paint_field(self, pwv: np.ndarray, flag: np.ndarray) -> Image.Image:
-        """The field of one hour as the pixels of the map.
-
-        pwv : precipitable water vapour (y, x) [kg m-2]; NaN is painted in `look.MISSING_COLOUR`
-        flag : bit mask (y, x); cells with a flag of `look.HATCHES` are hatched unless missing
-        """
-        missing = np.isnan(pwv)
-        cells = self.colours(self.norm(pwv))[..., :3] * self.relief[..., np.newaxis]
-        cells[missing] = to_rgb(look.MISSING_COLOUR)
-        cells = (255 * np.clip(cells, 0, 1) + 0.5).astype(np.uint8)
-        picture = Image.fromarray(enlarge_cells(cells, self.layout.map_shape))
-        for meaning, (ink, cover) in self.hatches.items():
-            flagged = (flag & self.flag_bits[meaning] != 0) & ~missing
-            if flagged.any():
-                mask = cover * enlarge_cells(flagged, self.layout.map_shape)
-                picture.paste(ink, mask=Image.fromarray(mask))
-        return picture
-
-    def _draw_over(self, page: Image.Image, artists) -> Image.Image:
-        """The page with artists drawn over it, in place of all that the canvas held."""
-        canvas = self.figure.canvas
-        pixels = np.asarray(canvas.buffer_rgba())
-        pixels[...] = page
-        for artist in artists:
-            artist.draw(canvas.get_renderer())
-        return Image.fromarray(pixels).convert("RGB")
+        return draw_over(page, self.figure, [*marks.artists, self.time_text, self.facts_text])
 
 
 def read_flag_bits(flag: xr.DataArray) -> dict:

@@ -28,11 +28,13 @@ class StationMarks:
     """Dots, crosses and values of one network's stations.
 
     stations : longitude and latitude (station) [degrees]
+    valued : whether values are written beside the dots, where there is room
     """
 
-    def __init__(self, axes, grid: MapGrid, stations: xr.Dataset):
+    def __init__(self, axes, grid: MapGrid, stations: xr.Dataset, *, valued: bool = True):
         self.positions = grid.project(stations["longitude"].values, stations["latitude"].values)
-        self.places = place_values(axes.transData.transform(self.positions), axes.bbox.extents)
+        pixels = axes.transData.transform(self.positions)
+        self.places = place_values(pixels, axes.bbox.extents) if valued else {}
         self.cross_halos = add_markers(axes, "x", CROSS_SIZE, look.PAPER_COLOUR, MARK_HALO)
         self.crosses = add_markers(axes, "x", CROSS_SIZE, look.INK_COLOUR, CROSS_WIDTH)
         self.rings = add_markers(axes, "o", DOT_SIZE, look.PAPER_COLOUR, MARK_HALO)

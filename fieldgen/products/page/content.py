@@ -5,10 +5,10 @@ from __future__ import annotations
 import numpy as np
 import xarray as xr
 
+from fieldgen.plain_text import one_line
 from fieldgen.products import look
 from fieldgen.products.flag_words import reason
 from fieldgen.products.maps.grid import MapGrid
-from fieldgen.products.maps.words import clean_name
 from fieldgen.products.page.ground import to_metres
 from fieldgen.products.page.layers import list_layers, threshold_limits
 from fieldgen.products.page.packing import pack_array, pack_range
@@ -47,7 +47,7 @@ def describe_page(hours: Hours, grid: MapGrid) -> dict:
 
 def network_name(fields: xr.Dataset) -> str:
     """Name of the network on one line, without control characters."""
-    return clean_name(str(fields.attrs["project"]))
+    return one_line(str(fields.attrs["project"]))
 
 
 def _seconds(time: np.ndarray) -> list[int]:
@@ -76,8 +76,8 @@ def _describe_stations(stations: xr.Dataset, grid: MapGrid) -> list[dict]:
     x, y = to_metres(grid, grid.project(longitude, latitude)).T
     return [
         {
-            "id": clean_name(str(stations["station"].values[number])),
-            "name": clean_name(str(stations["name"].values[number]))[:NAME_LENGTH],
+            "id": one_line(str(stations["station"].values[number])),
+            "name": one_line(str(stations["name"].values[number]))[:NAME_LENGTH],
             "x": _known(x[number]),
             "y": _known(y[number]),
             "longitude": _known(longitude[number]),
