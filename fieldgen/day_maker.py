@@ -84,6 +84,7 @@ class DayMaker:
         return packed_dataset(
             grid=network.grid,
             terrain_height=network.terrain.mean,
+            terrain_sd=network.terrain.sd,
             time=time,
             fields=fields,
             flag_bits=FIELD_FLAGS,
@@ -94,11 +95,16 @@ class DayMaker:
 
     def station_dataset(self, day: Day) -> xr.Dataset:
         """Stations of a day with all their metadata."""
+        settings = self.network.settings
+        kriging = {} if day.model is None else day.model.fit.covariance._asdict()
+        kriging["drift"] = settings.kriging.drift
+        kriging["reference_height"] = reference_height(settings, self.network.stations)
         return station_dataset(
             day.stations,
-            network=self.network.settings.network,
+            network=settings.network,
             flag_bits=STATION_FLAGS,
             pressure_sources=PRESSURE_SOURCES,
+            kriging=kriging,
         )
 
 

@@ -26,6 +26,7 @@ LAYERS = [
     ["chain", "summary", "progress", "text_table", "scoring"],
     ["log", "update", "status"],
     ["comparing"],
+    ["areas"],
     ["commands"],
     ["cli"],
 ]
