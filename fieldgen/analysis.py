@@ -13,6 +13,7 @@ import numpy as np
 import xarray as xr
 
 from fieldgen.kriging.covariance import Covariance
+from fieldgen.kriging.error_in_time import Part
 from fieldgen.kriging.fitting import (
     AUTO,
     CovarianceFit,
@@ -47,6 +48,9 @@ LEAST_MOISTURE = 1.0
 SCALE_HEIGHT_MEMORY = timedelta(hours=3)
 """Time after which an hour's scale height says little about the present one. Common practice, no
 source."""
+
+HEIGHT_ERROR = (Part(1.0, np.timedelta64(SCALE_HEIGHT_MEMORY)),)
+"""How the scale height's error resembles itself in time."""
 
 ROUNDS = 2
 """Fits and screenings in turn: what the first screening throws out has spoilt the first fit."""

@@ -49,14 +49,14 @@ class DayMaker:
     network: Network
 
     @cached_property
-    def _places(self) -> tuple[PlaceMaker, Places]:
+    def places(self) -> tuple[PlaceMaker, Places]:
         return locate(self.network.settings, self.network.stations)
 
     @cached_property
-    def _cells(self) -> CellMaker:
+    def cells(self) -> CellMaker:
         network = self.network
         reference = reference_height(network.settings, network.stations)
-        return CellMaker(network.grid, network.terrain, *self._places, reference)
+        return CellMaker(network.grid, network.terrain, *self.places, reference)
 
     def rows(self, piece: Piece) -> slice:
         """The steps of the input that a day is made from."""
@@ -69,14 +69,14 @@ class DayMaker:
         rows = self.rows(piece)
         stations = retrieve_water_vapour(self.network, rows)
         first, last = piece.first - rows.start, piece.last - rows.start
-        return analyse_day(self.network.settings, stations, self._places[1], first, last)
+        return analyse_day(self.network.settings, stations, self.places[1], first, last)
 
     def compute(self, piece: Piece) -> tuple[Day, Fields]:
         """Model and fields of a day."""
         keep_freed_memory()
         with threadpool_limits(1):  # results must not depend on how BLAS splits its sums
             day = self.analyse(piece)
-            return day, make_fields_of_day(self.network.settings, self._cells, day)
+            return day, make_fields_of_day(self.network.settings, self.cells, day)
 
     def packed_dataset(self, time, fields: Fields) -> xr.Dataset:
         """Fields (t, ny, nx) of one or several days with all their metadata, packed."""

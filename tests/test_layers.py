@@ -23,7 +23,7 @@ LAYERS = [
     ["report"],
     ["upkeep"],
     ["day_maker"],
-    ["chain", "summary", "progress", "text_table", "scoring"],
+    ["chain", "draws", "summary", "progress", "text_table", "scoring"],
     ["log", "update", "status"],
     ["comparing"],
     ["areas"],

@@ -15,16 +15,14 @@ from pathlib import Path
 import numpy as np
 import xarray as xr
 
-from fieldgen.analysis import SCALE_HEIGHT_MEMORY
+from fieldgen.analysis import HEIGHT_ERROR
 from fieldgen.comparing.field_reader import FieldFile, open_fields
 from fieldgen.errors import InputError
 from fieldgen.kriging.block import block_covariances, block_error_covariance, block_weights
 from fieldgen.kriging.covariance import Covariance
-from fieldgen.kriging.error_in_time import Part, correlation_in_time
+from fieldgen.kriging.error_in_time import correlation_in_time
 from fieldgen.kriging.places import PlaceMaker, Places
 from fieldgen.kriging.solver import Gaps, Kriging
-
-HEIGHT_ERROR = (Part(1.0, np.timedelta64(SCALE_HEIGHT_MEMORY)),)
 
 NEEDED = {
     "fields": ("terrain_sd", "common_sigma", "common_relative_sigma", "pwv_at_reference"),
