@@ -124,9 +124,9 @@ class Drawer:
             self._last = now
             if day.makable[hour]:
                 drawn[:, hour] = pack(hours.draw(hour, self._noise))
-        shape = (self.count, len(time), *self.maker.network.grid.shape)
-        dataset = self.maker.packed_dataset(time, fields)
-        return _with_draws(dataset, drawn.reshape(shape)).isel(time=piece.asked)
+        drawn = drawn.reshape(self.count, len(time), *self.maker.network.grid.shape)
+        dataset = self.maker.packed_dataset(time[piece.asked], fields.steps(piece.asked))
+        return _with_draws(dataset, drawn[:, piece.asked])
 
 
 class _Hours:
