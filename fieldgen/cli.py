@@ -11,10 +11,10 @@ import argparse
 import os
 import sys
 
-from fieldgen.commands import catchments, check, compare, draws, make, score, status, update
+from fieldgen.commands import catchments, check, compare, draws, export, make, score, status, update
 from fieldgen.errors import FieldgenError
 
-COMMANDS = (make, update, status, check, score, compare, catchments, draws)
+COMMANDS = (make, update, status, check, score, compare, catchments, draws, export)
 """In the order of the help."""
 
 _DESCRIPTION = (

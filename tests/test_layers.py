@@ -26,7 +26,7 @@ LAYERS = [
     ["chain", "draws", "summary", "progress", "text_table", "scoring"],
     ["log", "update", "status"],
     ["comparing"],
-    ["areas"],
+    ["areas", "exporting"],
     ["commands"],
     ["cli"],
 ]

@@ -117,10 +117,7 @@ class ProductDay:
     def _cells(self) -> dict:
         """Longitude, latitude [degrees], mean height and its SD [m] of all cells (ny * nx,)."""
         dataset = self.fields.dataset
-        if dataset.longitude.ndim == 1:
-            longitude, latitude = np.meshgrid(dataset.longitude.values, dataset.latitude.values)
-        else:
-            longitude, latitude = dataset.longitude.values, dataset.latitude.values
+        longitude, latitude = self.fields.longitude_latitude
         values = (longitude, latitude, dataset.terrain.values, dataset.terrain_sd.values)
         names = ("longitude", "latitude", "ground", "sd")
         return {name: one.ravel().astype(float) for name, one in zip(names, values, strict=True)}

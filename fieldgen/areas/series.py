@@ -83,10 +83,8 @@ def area_series(days: list[ProductDay], areas: Areas, every: str) -> AreaSeries:
 def find_overlaps(day: ProductDay, areas: Areas) -> list[Overlap]:
     """The cells under each area; raises InputError if there are none at all."""
     dataset = day.fields.dataset
-    crs = pyproj.CRS.from_wkt(dataset.crs.attrs["crs_wkt"])
-    middle = float(dataset.longitude.mean()), float(dataset.latitude.mean())
-    plane = equal_area(*middle)
-    to_plane = pyproj.Transformer.from_crs(crs, plane, always_xy=True)
+    plane = equal_area(*(float(part.mean()) for part in day.fields.longitude_latitude))
+    to_plane = pyproj.Transformer.from_crs(day.fields.crs, plane, always_xy=True)
     corners = to_plane.transform(*corners_between(dataset.x_bnds.values, dataset.y_bnds.values))
     found = [overlap(*corners, outline) for outline in areas.in_crs(plane)]
     if not any(len(one.cells) for one in found):
