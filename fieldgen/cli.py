@@ -11,10 +11,21 @@ import argparse
 import os
 import sys
 
-from fieldgen.commands import catchments, check, compare, draws, export, make, score, status, update
+from fieldgen.commands import (
+    catchments,
+    check,
+    compare,
+    daily,
+    draws,
+    export,
+    make,
+    score,
+    status,
+    update,
+)
 from fieldgen.errors import FieldgenError
 
-COMMANDS = (make, update, status, check, score, compare, catchments, draws, export)
+COMMANDS = (make, update, status, check, score, compare, catchments, daily, draws, export)
 """In the order of the help."""
 
 _DESCRIPTION = (
