@@ -29,8 +29,8 @@ COMMENTS = {
     "pwv_mean": "Of the steps of the day that have a value; missing where a quarter of them lack.",
     "pwv_mean_sigma": "Errors of steps resemble each other: kriging errors and that of the scale "
     "height as times pass, what all stations share for good.",
-    "pwv_maximum": "The largest of the steps' means. Of values with errors the largest tends to be "
-    "too large, by up to its standard error.",
+    "pwv_maximum": "The largest of the steps' means. Errors make the largest of several values too "
+    "large, the smoothness of kriging too small.",
     "pwv_maximum_sigma": "The standard error of the step of the maximum.",
 }
 
