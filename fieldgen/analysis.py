@@ -14,6 +14,7 @@ import numpy as np
 import xarray as xr
 
 from fieldgen.kriging.covariance import Covariance, distances
+from fieldgen.kriging.error_in_time import Part
 from fieldgen.kriging.fitting import (
     AUTO,
     CovarianceFit,
@@ -52,6 +53,9 @@ LEAST_MOISTURE = 1.0
 SCALE_HEIGHT_MEMORY = timedelta(hours=3)
 """Time after which an hour's scale height says little about the present one. Common practice, no
 source."""
+
+HEIGHT_ERROR = (Part(1.0, np.timedelta64(SCALE_HEIGHT_MEMORY)),)
+"""How the scale height's error resembles itself in time."""
 
 ROUNDS = 2
 """Fits and screenings in turn: what the first screening throws out has spoilt the first fit."""
@@ -119,8 +123,9 @@ class Day:
 
     window, model : None where too few stations report; their hours are those of the day
     makable : (t,) bool, hours with enough stations
-    stations : Dataset (time, station) of the day with the final flag and the residual of leaving
-        each station out
+    stations : Dataset (time, station) of the day with the final flag, the residual of leaving
+        each station out, and what the error of kriging follows from: error_variance [kg2 m-4] of
+        the values used, at the reference height, and variance_factor by time
     """
 
     window: Window | None
@@ -157,7 +162,8 @@ def analyse_day(
     of_day = stations.isel(time=day)
     if window is None:
         nothing = np.full(of_day.flag.shape, np.nan)
-        return Day(None, None, np.zeros(last - first, bool), _assign(of_day, 0, nothing, nothing))
+        without = _assign(of_day, 0, nothing, nothing, nothing, nothing[:, 0])
+        return Day(None, None, np.zeros(last - first, bool), without)
     model, verdict = _model_window(settings, window)
     window, model = _cut(window, model)
     of_day = _with_tests(of_day, window, model, verdict, day)
@@ -466,13 +472,18 @@ def _with_tests(
     bits[:, window.index] = STATION_FLAGS["disagrees_with_neighbours"] * verdict.disagree[day]
     bits[:, window.index] |= STATION_FLAGS["level_shift"] * verdict.shifted[day]
     bits[:, window.index] |= STATION_FLAGS["condemned"] * (verdict.out & has_value)
-    residual, sigma = np.full(shape, np.nan), np.full(shape, np.nan)
+    residual, sigma, error_variance = np.full((3, *shape), np.nan)
+    variance_factor = np.where(_makable(model), model.variance_factor, np.nan)
     at_reference, _ = window.at_reference(model.scale_height)
     factor = window.pwv / at_reference
     for hour in np.flatnonzero(_makable(model)):
         found = _residuals(model, hour, at_reference[hour])
         residual[hour, window.index], sigma[hour, window.index] = found * factor[hour]
-    return _assign(stations, bits, residual, sigma)
+        error = model.kriging.error_variance + model.excess[hour]
+        error_variance[hour, window.index] = np.where(
+            np.isfinite(model.values[hour]), error, np.nan
+        )
+    return _assign(stations, bits, residual, sigma, error_variance, variance_factor)
 
 
 def _residuals(model: Model, hour: int, at_reference):
@@ -489,10 +500,14 @@ def _residuals(model: Model, hour: int, at_reference):
     return np.array([np.where(out, at_reference - predicted, residual), sigma])
 
 
-def _assign(stations: xr.Dataset, bits, residual, sigma) -> xr.Dataset:
+def _assign(
+    stations: xr.Dataset, bits, residual, sigma, error_variance, variance_factor
+) -> xr.Dataset:
     dimensions = ("time", "station")
     return stations.assign(
         flag=(dimensions, stations.flag.values | bits),
         residual=(dimensions, residual),
         residual_sigma=(dimensions, sigma),
+        error_variance=(dimensions, error_variance),
+        variance_factor=("time", variance_factor),
     )

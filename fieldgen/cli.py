@@ -13,8 +13,12 @@ import sys
 
 from fieldgen.commands import (
     animate,
+    catchments,
     check,
     compare,
+    daily,
+    draws,
+    export,
     make,
     page,
     score,
@@ -26,7 +30,12 @@ from fieldgen.commands import (
 from fieldgen.commands.terminal import show
 from fieldgen.errors import FieldgenError
 
-COMMANDS = (make, update, status, check, score, compare, page, animate, stations, sheet)
+COMMANDS = (
+    make, update, status, check, score, compare,
+    page,
+    catchments, daily, draws, export,
+    animate, stations, sheet,
+)  # fmt: skip
 """In the order of the help."""
 
 _DESCRIPTION = (

@@ -50,14 +50,14 @@ class DayMaker:
     network: Network
 
     @cached_property
-    def _places(self) -> tuple[PlaceMaker, Places]:
+    def places(self) -> tuple[PlaceMaker, Places]:
         return locate(self.network.settings, self.network.stations)
 
     @cached_property
-    def _cells(self) -> CellMaker:
+    def cells(self) -> CellMaker:
         network = self.network
         reference = reference_height(network.settings, network.stations)
-        return CellMaker(network.grid, network.terrain, *self._places, reference)
+        return CellMaker(network.grid, network.terrain, *self.places, reference)
 
     def rows(self, piece: Piece) -> slice:
         """The steps of the input that a day is made from."""
@@ -70,14 +70,14 @@ class DayMaker:
         rows = self.rows(piece)
         stations = retrieve_water_vapour(self.network, rows)
         first, last = piece.first - rows.start, piece.last - rows.start
-        return analyse_day(self.network.settings, stations, self._places[1], first, last)
+        return analyse_day(self.network.settings, stations, self.places[1], first, last)
 
     def compute(self, piece: Piece) -> tuple[Day, Fields]:
         """Model and fields of a day."""
         keep_freed_memory()
         with threadpool_limits(1):  # results must not depend on how BLAS splits its sums
             day = self.analyse(piece)
-            return day, make_fields_of_day(self.network.settings, self._cells, day)
+            return day, make_fields_of_day(self.network.settings, self.cells, day)
 
     def packed_dataset(self, time, fields: Fields) -> xr.Dataset:
         """Fields (t, ny, nx) of one or several days with all their metadata, packed."""
@@ -85,6 +85,7 @@ class DayMaker:
         return packed_dataset(
             grid=network.grid,
             terrain_height=network.terrain.mean,
+            terrain_sd=network.terrain.sd,
             time=time,
             fields=fields,
             flag_bits=FIELD_FLAGS,
@@ -95,11 +96,16 @@ class DayMaker:
 
     def station_dataset(self, day: Day) -> xr.Dataset:
         """Stations of a day with all their metadata."""
+        settings = self.network.settings
+        kriging = {} if day.model is None else day.model.fit.covariance._asdict()
+        kriging["drift"] = settings.kriging.drift
+        kriging["reference_height"] = reference_height(settings, self.network.stations)
         return station_dataset(
             day.stations,
-            network=self.network.settings.network,
+            network=settings.network,
             flag_bits=STATION_FLAGS,
             pressure_sources=PRESSURE_SOURCES,
+            kriging=kriging,
         )
 
 

@@ -258,7 +258,7 @@ def _fill_piece(
         (made.sigma, sigma),
         (made.at_reference, solution.level),
     ):
-        field.reshape(len(field), -1)[hours, cells.rows] = _pack(values)
+        field.reshape(len(field), -1)[hours, cells.rows] = pack(values)
     made.flag.reshape(len(made.flag), -1)[hours, cells.rows] |= flags
     return int((pwv < 0.0).sum())
 
@@ -279,7 +279,7 @@ def _sigma(pwv, kriging_variance, relative_height_sigma, common):
     return np.sqrt(kriging_variance + np.square(pwv * relative_height_sigma) + np.square(common))
 
 
-def _pack(values):
+def pack(values):
     """Values [kg m-2] in packed steps; below zero as zero."""
     packed = np.clip(values, 0.0, HIGHEST) * np.float32(1.0 / PACKED_STEP)
     return np.where(np.isnan(packed), MISSING, np.rint(packed)).astype(np.int16)

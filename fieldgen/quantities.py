@@ -62,6 +62,18 @@ QUANTITIES = {
     "residual_sigma": Quantity(
         "kg m-2", "", "standard error of the residual", content="qualityInformation"
     ),
+    "error_variance": Quantity(
+        "kg2 m-4",
+        "",
+        "error variance of a value used, at the reference height, as kriging takes it",
+        content="qualityInformation",
+    ),
+    "variance_factor": Quantity(
+        "1",
+        "",
+        "variance of the hour's kriging errors over that of the day's covariance",
+        content="qualityInformation",
+    ),
     "common_sigma": Quantity(
         "kg m-2",
         "",
@@ -81,6 +93,12 @@ QUANTITIES = {
         "m",
         "surface_altitude",
         "mean height of the terrain in the cell",
+        content="auxiliaryInformation",
+    ),
+    "terrain_sd": Quantity(
+        "m",
+        "surface_altitude",
+        "standard deviation of the terrain's height within the cell",
         content="auxiliaryInformation",
     ),
     "scale_height": Quantity("m", "", "scale height of precipitable water vapour"),

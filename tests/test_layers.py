@@ -23,9 +23,9 @@ LAYERS = [
     ["report"],
     ["upkeep"],
     ["day_maker"],
-    ["chain", "summary", "progress", "text_table", "scoring"],
+    ["chain", "draws", "summary", "progress", "text_table", "scoring"],
     ["log", "update", "status"],
-    ["comparing", "outreach"],
+    ["comparing", "outreach", "areas", "exporting"],
     ["commands"],
     ["cli"],
 ]

@@ -73,12 +73,23 @@ class FieldFile:
         """Mean height (ny, nx) [m] of the cells."""
         return self.dataset.terrain.values.astype(float)
 
+    @property
+    def crs(self) -> pyproj.CRS:
+        """The grid's CRS."""
+        return pyproj.CRS.from_wkt(self.dataset.crs.attrs["crs_wkt"])
+
+    @cached_property
+    def longitude_latitude(self):
+        """Longitude and latitude (ny, nx) [degrees] of the cell centres."""
+        to_degrees = pyproj.Transformer.from_crs(self.crs, "EPSG:4326", always_xy=True)
+        return to_degrees.transform(*np.meshgrid(self.dataset.x.values, self.dataset.y.values))
+
     def corners(self, longitude, latitude) -> tuple[Corners, np.ndarray]:
         """Cells around places (n,) [degrees], and whether the places lie on the grid (n,).
 
         Between the outermost centres and the grid's edge the outermost cells count alone.
         """
-        crs = pyproj.CRS.from_wkt(self.dataset.crs.attrs["crs_wkt"])
+        crs = self.crs
         to_grid = pyproj.Transformer.from_crs("EPSG:4326", crs, always_xy=True)
         x, y = to_grid.transform(longitude, latitude)
         columns, rows = self.dataset.x.values, self.dataset.y.values

@@ -48,6 +48,11 @@ class Terrain:
         """Mean height (ny, nx) [m] of each cell."""
         return self.points.mean(axis=0)
 
+    @property
+    def sd(self):
+        """Standard deviation (ny, nx) [m] of the heights within each cell."""
+        return self.points.std(axis=0)
+
 
 def read_terrain(path: Path, grid: Grid, lowest_land: float = SEA_LEVEL) -> Terrain:
     """Terrain of a raster file (GeoTIFF, NetCDF or another format of GDAL) under a grid.

@@ -33,6 +33,7 @@ def packed_dataset(
     *,
     grid: Grid,
     terrain_height,
+    terrain_sd,
     time,
     fields,
     flag_bits,
@@ -42,9 +43,9 @@ def packed_dataset(
 ) -> xr.Dataset:
     """Dataset of packed fields with all CF attributes; dimensions time, y, x.
 
-    terrain_height (ny, nx) [m]; time (t,) datetime64; fields: packed pwv, sigma, at_reference, and
-    flag (t, ny, nx), scale_height and its sigma, station_count and the parts of the common error
-    (t,); processing: text that says how it was made
+    terrain_height, terrain_sd (ny, nx) [m]: mean, and within the cells; time (t,) datetime64;
+    fields: packed pwv, sigma, at_reference, and flag (t, ny, nx), scale_height and its sigma,
+    station_count and the parts of the common error (t,); processing: text that says how it was made
     """
     space = ("time", "y", "x")
     dataset = xr.Dataset(
@@ -55,7 +56,10 @@ def packed_dataset(
                 space, fields.at_reference, _reference_attributes(reference_height)
             ),
             "flag": (space, fields.flag, _flag_attributes(flag_bits)),
-            "terrain": (("y", "x"), terrain_height, _terrain_attributes()),
+            "terrain": (("y", "x"), terrain_height, _terrain_attributes("terrain", "mean")),
+            "terrain_sd": (
+                ("y", "x"), terrain_sd, _terrain_attributes("terrain_sd", "standard_deviation")
+            ),
             "scale_height": (
                 "time",
                 fields.scale_height,
@@ -90,7 +94,7 @@ def packed_dataset(
     )  # fmt: skip
     dataset = dataset.reset_coords(["time_bnds", "y_bnds", "x_bnds"])
     dataset.attrs["processing"] = processing
-    for name in ("pwv", "pwv_sigma", "pwv_at_reference", "flag", "terrain"):
+    for name in ("pwv", "pwv_sigma", "pwv_at_reference", "flag", "terrain", "terrain_sd"):
         dataset[name].attrs["grid_mapping"] = "crs"
     _set_encoding(dataset)
     return dataset
@@ -142,8 +146,8 @@ def _flag_attributes(bits: dict[str, int]) -> dict:
     }
 
 
-def _terrain_attributes() -> dict:
-    return QUANTITIES["terrain"].attributes() | {"cell_methods": "area: mean"}
+def _terrain_attributes(name: str, method: str) -> dict:
+    return QUANTITIES[name].attributes() | {"cell_methods": f"area: {method}"}
 
 
 def _coordinates(grid: Grid, time, step) -> dict:
@@ -191,7 +195,8 @@ def _set_encoding(dataset: xr.Dataset) -> None:
     chunks = {"chunksizes": (1, dataset.sizes["y"], dataset.sizes["x"])}
     for name in ("pwv", "pwv_sigma", "pwv_at_reference", "flag"):
         dataset[name].encoding = {**COMPRESSION, **chunks}
-    dataset["terrain"].encoding = {"dtype": "float32", "_FillValue": None, **COMPRESSION}
+    for name in ("terrain", "terrain_sd"):
+        dataset[name].encoding = {"dtype": "float32", "_FillValue": None, **COMPRESSION}
     for name in ("scale_height", "scale_height_sigma"):
         dataset[name].encoding = {"dtype": "float32", "_FillValue": np.float32(-9999.0)}
     for name in ("common_sigma", "common_relative_sigma"):

@@ -58,11 +58,11 @@ def global_attributes(
         "date_created": now,
         "standard_name_vocabulary": "CF Standard Name Table v93",
         **_who_made_it(network),
-        **_geospatial(bounds),
+        **geospatial_attributes(bounds),
         "time_coverage_start": format_time(start),
         "time_coverage_end": format_time(end),
-        "time_coverage_duration": _format_duration(end - start),
-        "time_coverage_resolution": _format_duration(step),
+        "time_coverage_duration": format_duration(end - start),
+        "time_coverage_resolution": format_duration(step),
     }
 
 
@@ -79,7 +79,7 @@ def _who_made_it(network: NetworkTable) -> dict:
     return {"institution": institution, "license": network.license, **roles}
 
 
-def _geospatial(bounds) -> dict:
+def geospatial_attributes(bounds) -> dict:
     west, south, east, north = (round(float(edge), 5) for edge in bounds)
     return {
         "geospatial_lon_min": west,
@@ -94,7 +94,7 @@ def _geospatial(bounds) -> dict:
     }
 
 
-def _format_duration(duration: np.timedelta64) -> str:
+def format_duration(duration: np.timedelta64) -> str:
     """ISO 8601 duration, to the minute."""
     return f"PT{int(duration / np.timedelta64(1, 'm'))}M"
 

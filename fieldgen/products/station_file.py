@@ -19,7 +19,7 @@ from fieldgen.settings import NetworkTable
 _SERIES = {
     "ztd": "float64", "zhd": "float64", "zwd": "float64", "pressure": "float32",
     "mean_temperature": "float32", "pwv": "float32", "pwv_sigma": "float32", "residual": "float32",
-    "residual_sigma": "float32",
+    "residual_sigma": "float32", "error_variance": "float32",
 }  # fmt: skip
 """Series of the file that stand in the table of quantities, with the type they are stored in."""
 
@@ -29,11 +29,13 @@ _FILL = -9999.0
 
 
 def station_dataset(
-    stations: xr.Dataset, *, network: NetworkTable, flag_bits, pressure_sources
+    stations: xr.Dataset, *, network: NetworkTable, flag_bits, pressure_sources, kriging: dict
 ) -> xr.Dataset:
     """Dataset of a day's stations with all CF attributes; dimensions station, time.
 
     stations : of `analysis.Day`, dimensions time, station
+    kriging : parameters that, with the error variances and the variance factor, the error of
+        kriging anywhere follows from; they are attributes of a variable of that name
     """
     time = stations.time.values
     turned = stations.drop_dims("site").transpose("station", "time")
@@ -43,6 +45,7 @@ def station_dataset(
         dataset[name].encoding = {"dtype": dtype, "_FillValue": _FILL, "zlib": True}
     dataset["pwv"].attrs |= {"ancillary_variables": "pwv_sigma flag", "cell_methods": "time: mean"}
     _add_codes(dataset, turned, flag_bits, pressure_sources)
+    _add_kriging(dataset, turned, kriging)
     dataset = dataset.reset_coords("time_bnds")
     dataset.attrs = _attributes(turned, network, time)
     return dataset
@@ -92,6 +95,17 @@ def _add_codes(dataset: xr.Dataset, stations: xr.Dataset, flag_bits, pressure_so
     )  # fmt: skip
     for name in ("pressure_source", "flag"):
         dataset[name].encoding = {"zlib": True, "_FillValue": None}
+
+
+def _add_kriging(dataset: xr.Dataset, stations: xr.Dataset, kriging: dict) -> None:
+    attributes = QUANTITIES["variance_factor"].attributes()
+    dataset["variance_factor"] = ("time", stations.variance_factor.values, attributes)
+    dataset["variance_factor"].encoding = {"dtype": "float32", "_FillValue": _FILL}
+    dataset["kriging"] = ((), np.int32(0), {
+        "long_name": "covariance of water vapour at the reference height; sills and nugget in "
+        "kg2 m-4, by km2 and km4 of height; range, where it has fallen to 5 %, in km",
+        **kriging,
+    })  # fmt: skip
 
 
 def _attributes(stations: xr.Dataset, network: NetworkTable, time) -> dict:

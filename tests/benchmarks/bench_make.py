@@ -81,7 +81,7 @@ def time_stages(path: Path, out: Path) -> dict[str, float]:
             clock = [time.perf_counter()]
             day = maker.analyse(piece)
             clock.append(time.perf_counter())
-            fields = make_fields_of_day(network.settings, maker._cells, day)
+            fields = make_fields_of_day(network.settings, maker.cells, day)
             clock.append(time.perf_counter())
             write_fields(maker.packed_dataset(day.stations.time.values, fields), out / "again.nc")
             clock.append(time.perf_counter())

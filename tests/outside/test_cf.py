@@ -13,12 +13,14 @@ import netCDF4
 import numpy as np
 import pytest
 import rasterio
+import shapely
 import xarray as xr
 from rasterio import warp
 from rasterio.transform import rowcol
 
 from fieldgen import read_network
 from fieldgen.chain import make
+from fieldgen.cli import main
 
 checker = pytest.importorskip("compliance_checker.runner", reason="compliance-checker judges")
 
@@ -28,8 +30,12 @@ START, END = "2026-09-08T00:00Z", "2026-09-09T00:00Z"
 NO_STANDARD_NAME = {
     "ztd", "zhd", "zwd", "ztd_sigma", "mean_temperature", "scale_height", "residual",
     "residual_sigma", "common_sigma", "common_relative_sigma", "scale_height_sigma",
+    "error_variance", "variance_factor", "volume", "volume_sigma", "coverage",
 }  # fmt: skip
 """Variables for whose quantity the CF table has no name; ACDD recommends one for all."""
+
+OF_GEOMETRIES = {"outline", "node_count", "part_node_count", "interior_ring"}
+"""Variables that only say how CF geometries are stored; they have neither quantity nor unit."""
 
 NOT_TOLD = {
     "acknowledgment/acknowledgement", "creator_url", "creator_email", "publisher_url",
@@ -49,7 +55,19 @@ def files(tmp_path_factory) -> dict[str, Path]:
     folder = tmp_path_factory.mktemp("run")
     make(network, folder, start=START, end=END)
     (fields,), (stations,) = (list((folder / kind).iterdir()) for kind in ("fields", "stations"))
-    return {"fields": fields, "stations": stations}
+    status = main(["catchments", str(folder), "--start", "2026-09-08T20:00"])
+    assert status == 0
+    assert main(["daily", str(folder)]) == 0
+    period = ["--start", "2026-09-08T20:00", "--end", "2026-09-08T22:00"]
+    more = ["--count", "3", "--out", str(folder)]
+    assert main(["draws", str(DEMO / "network.toml"), *period, *more]) == 0
+    return {
+        "fields": fields,
+        "stations": stations,
+        "areas": folder / "catchments/catchments_1h.nc",
+        "daily": folder / "daily/daily_20260908.nc",
+        "draws": folder / "draws/draws_20260908.nc",
+    }
 
 
 def judge(path: Path, standard: str, folder: Path) -> list[dict]:
@@ -72,15 +90,42 @@ def complaints(findings: list[dict], weight: int) -> list[str]:
     ]
 
 
-@pytest.mark.parametrize("kind", ["fields", "stations"])
+CHECKER_IS_WRONG = (
+    r"Parent variable '\w+' does not include geometry dimension 'node' used in geometry .*",
+    "part_node_count variable part_node_count must have the same single dimension as interior ring "
+    "variable interior_ring",
+)
+"""Of polygons with several nodes each, CF 7.5 wants the dimension of node_count, not of the nodes,
+in the data (its example 7.14); the second message comes from the number of parts, not of
+dimensions. `test_catchments_writes_outlines_that_cf_xarray_reads` looks at the same variables."""
+
+
+@pytest.mark.parametrize("kind", ["fields", "stations", "areas", "daily", "draws"])
 def test_make_writes_files_without_a_cf_finding(files, tmp_path, kind):
     """Another library: compliance-checker, cf:1.11, strict: no error, warning or suggestion."""
     findings = judge(files[kind], "cf:1.11", tmp_path)
     assert len(findings) > 20
-    assert [complaints(findings, weight) for weight in (3, 2, 1)] == [[], [], []]
+    found = [message for weight in (3, 2, 1) for message in complaints(findings, weight)]
+    known = CHECKER_IS_WRONG if kind == "areas" else ()
+    assert not [one for one in found if not any(re.fullmatch(rule, one) for rule in known)]
 
 
-@pytest.mark.parametrize("kind", ["fields", "stations"])
+def test_catchments_writes_outlines_that_cf_xarray_reads(files):
+    """Another library: cf-xarray makes polygons of the CF geometries; they are those of the input.
+
+    1e-9 square degrees: the file's own vertices, up to rounding.
+    """
+    geometry = pytest.importorskip("cf_xarray.geometry")
+    collection = json.loads((DEMO / "catchments.geojson").read_text())
+    with xr.open_dataset(files["areas"]) as areas:
+        outlines = geometry.cf_to_shapely(areas, container="outline").values
+        names = areas.catchment_name.values.tolist()
+    for name, outline, feature in zip(names, outlines, collection["features"], strict=True):
+        assert feature["properties"]["name"] == name
+        assert outline.symmetric_difference(shapely.geometry.shape(feature["geometry"])).area < 1e-9
+
+
+@pytest.mark.parametrize("kind", ["fields", "stations", "areas", "daily", "draws"])
 def test_make_writes_files_that_acdd_approves(files, tmp_path, kind):
     """Another library: compliance-checker, acdd:1.3, strict.
 
@@ -88,12 +133,16 @@ def test_make_writes_files_that_acdd_approves(files, tmp_path, kind):
     What it merely recommends or suggests and the files lack is listed in NOT_TOLD.
     """
     findings = judge(files[kind], "acdd:1.3", tmp_path)
-    assert len(findings) > 20
+    assert len(findings) > 15
     unfulfilled = [one for one in findings if one["value"][0] < one["value"][1]]
     for one in (one for one in unfulfilled if one["weight"] == 3):
-        assert one["msgs"] == ["standard_name"]
-        assert re.search(r'variable "(\w+)"', one["name"])[1] in NO_STANDARD_NAME
+        variable = re.search(r'variable "(\w+)"', one["name"])[1]
+        if variable not in OF_GEOMETRIES:
+            assert one["msgs"] == ["standard_name"]
+            assert variable in NO_STANDARD_NAME
     recommended = complaints(findings, 2)
+    if kind == "daily":  # its only stamp ends the day, a day after time_coverage_start, rightly
+        recommended = [one for one in recommended if "mismatch between time_coverage_st" not in one]
     assert {message.removesuffix(" not present") for message in recommended} <= NOT_TOLD
 
 
