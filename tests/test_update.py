@@ -326,7 +326,7 @@ def test_a_quota_leaves_whole_files_and_the_next_run_completes(tmp_path, limit):
     path = scene(tmp_path, days=2)
     out = tmp_path / "out"
     run(path, out)
-    edit(path, "[0, 40]", "[0, 40]\n[retrieval]\ncommon_sigma = 0.3")
+    path.write_text(path.read_text() + "[retrieval]\ncommon_sigma = 0.3\n")
     context = multiprocessing.get_context("fork")
     process = context.Process(target=_with_little_room, args=(path, out, limit))
     process.start()
