@@ -10,7 +10,7 @@ import sys
 from pathlib import Path
 
 import numpy as np
-from generator import formats, model, observations, truth, truth_files
+from generator import formats, model, observations, radiometer, truth, truth_files
 from generator.island import terrain
 from generator.map_lines import catchments, coast, rivers
 from generator.setting import HOURS, START
@@ -35,6 +35,7 @@ def make_demo(folder):
     truth_files.write_model_weather(
         folder / "weather_grid.nc", states, moments, model.LONGITUDE, model.LATITUDE
     )
+    formats.write_lines(folder / "observations.csv", radiometer.radiometer_table(weather, height))
     faults = observations.planted_faults(receivers, gross, pressure_bias, sensors)
     formats.write_json(folder / "truth" / "faults.json", faults)
     truth_files.write_water_vapour(

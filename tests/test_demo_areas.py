@@ -55,17 +55,17 @@ def rms(values):
 
 def test_hourly_means_are_right_and_their_errors_honest(days, areas, overlaps, truth):
     """Analytic atmosphere: RMSE at most 0.6 kg m-2 over 5 catchments and 72 hours; standardised
-    errors have an RMS of 0.81, so 0.7 to 1.15 passes. The largest part of the error bar is that of
+    errors have an RMS of 0.88, so 0.8 to 1.15 passes. The largest part of the error bar is that of
     Tm, which suits the demo's air; the next test but one puts its true error in its place."""
     series = area_series(days, areas, "step")
     error = series.pwv - true_means(truth, overlaps)
     print(f"hourly: RMSE {rms(error):.2f} kg m-2, standardised {rms(error / series.sigma):.2f}")
     assert rms(error) <= 0.6
-    assert 0.7 <= rms(error / series.sigma) <= 1.15
+    assert 0.8 <= rms(error / series.sigma) <= 1.15
 
 
 def test_daily_means_have_honest_errors(days, areas, overlaps, truth):
-    """Analytic atmosphere: 15 daily means; their standardised errors have an RMS of 0.69.
+    """Analytic atmosphere: 15 daily means; their standardised errors have an RMS of 0.77.
 
     Independent hours would have error bars of a fifth of the hour's: a negative control.
     """
@@ -79,7 +79,7 @@ def test_daily_means_have_honest_errors(days, areas, overlaps, truth):
 
 
 def test_errors_are_honest_with_the_error_that_tm_has(days, areas, overlaps, truth):
-    """Analytic atmosphere: Tm is taken to be wrong by 5 K, and is by 1.3 K on these three days (RMS
+    """Analytic atmosphere: Tm is taken to be wrong by 4 K, and is by 1.3 K on these three days (RMS
     of the network's mean). With that in its place standardised errors have an RMS of 1.0 by hour
     and 0.9 by day; 0.85 to 1.15 passes."""
     with xr.open_dataset(DEMO / "truth/stations_truth.nc") as dataset:
@@ -106,8 +106,8 @@ def test_errors_are_honest_with_the_error_that_tm_has(days, areas, overlaps, tru
 
 def test_differences_between_catchments_have_honest_errors(days, overlaps, truth):
     """Analytic atmosphere: of the difference of two catchments the shared error drops out, and
-    kriging and scale height are left: standardised errors of 10 pairs have an RMS of 1.17 by hour
-    and 1.22 by day.
+    kriging and scale height are left: standardised errors of 10 pairs have an RMS of 1.18 by hour
+    and 1.24 by day.
 
     Hours and pairs resemble each other, so that the 720 count like some 40: 0.8 to 1.25 passes by
     hour, 0.75 to 1.4 by day.

@@ -28,7 +28,7 @@ def write_delays(folder, sites, listed_ellipsoidal, ztd, formal, marked_missing)
             *_tro_solution(sites, ztd[epochs], formal[epochs], midnight, marked_missing),
             "%=ENDTRO",
         ]
-        _write_lines(folder / f"quendrava_{_day_of_year(midnight)}.tro", lines)
+        write_lines(folder / f"quendrava_{_day_of_year(midnight)}.tro", lines)
 
 
 def write_weather(folder, sensors, reports, moments):
@@ -45,7 +45,7 @@ def write_weather(folder, sensors, reports, moments):
             _rinex_record(version, moment, row)
             for moment, row in zip(moments, reports[:, number], strict=True)
         ]
-        _write_lines(folder / f"{identifier[:4].lower()}.rnx", header + records)
+        write_lines(folder / f"{identifier[:4].lower()}.rnx", header + records)
 
 
 def write_station_table(path, sites, listed_error):
@@ -82,7 +82,7 @@ def write_json(path, content):
     path.write_text(json.dumps(content, indent=1) + "\n")
 
 
-def _write_lines(path, lines):
+def write_lines(path, lines):
     path.parent.mkdir(parents=True, exist_ok=True)
     path.write_text("\n".join(lines) + "\n", encoding="ascii")
 

@@ -43,13 +43,14 @@ def add(commands) -> None:
     add_period(parser)
     parser.add_argument(
         "--out", metavar="STEM", type=Path,
-        help="write STEM.csv and STEM.nc (default: FOLDER/catchments/<areas>_<step>)",
+        help="write STEM.csv, STEM.nc and STEM.png (default: FOLDER/catchments/<areas>_<step>)",
     )  # fmt: skip
 
 
 def _run(options: argparse.Namespace) -> int:
     from fieldgen.areas.day import open_days
     from fieldgen.areas.files import write_series
+    from fieldgen.areas.picture import write_picture
     from fieldgen.areas.series import area_series
     from fieldgen.areas.summary import format_series
     from fieldgen.period import check_period, parse_time
@@ -66,7 +67,9 @@ def _run(options: argparse.Namespace) -> int:
     stem = options.out or options.folder / "catchments" / f"{source.stem}_{label}"
     check_writable(stem.parent)
     series = area_series(days, areas, every).between(*period)
-    paths = write_series(series, days[0].fields.dataset.attrs, stem)
+    about = days[0].fields.dataset.attrs
+    paths = write_series(series, about, stem)
+    paths.append(write_picture(series, about["project"], stem.with_name(f"{stem.name}.png")))
     show(format_series(series))
     show(f"{len(paths)} files written to {stem.parent}")
     return 0

@@ -15,7 +15,7 @@ def add(commands) -> None:
         commands,
         "compare",
         "compare field files with independent water vapour or soundings",
-        "fieldgen compare outputs/*/fields/pwv_*.nc --with observations.csv",
+        "fieldgen compare outputs/*/fields/pwv_*.nc --with demo_network/observations.csv",
         _run,
     )
     parser.add_argument("fields", metavar="FIELDS", type=Path, nargs="+", help="pwv_YYYYMMDD.nc")

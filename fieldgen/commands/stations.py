@@ -22,7 +22,7 @@ def add(commands) -> None:
         commands,
         "stations",
         "plot the delay and water vapour of stations over time",
-        'fieldgen stations "outputs/Quendrava GNSS network" --last 2d',
+        'fieldgen stations "outputs/Quendrava GNSS network" --station RUSQ00XQV',
         _run,
     )
     add_products(parser)

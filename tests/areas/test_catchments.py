@@ -58,7 +58,7 @@ def rows(path):
 def test_catchments_writes_both_files_alike(folder, capsys):
     """Round trip: the table and the NetCDF file hold the same figures; names with commas too."""
     assert run(folder) == 0
-    assert "2 files written" in capsys.readouterr().out
+    assert "3 files written" in capsys.readouterr().out
     table = rows(folder / "out/catchments/areas_1h.csv")
     with xr.open_dataset(folder / "out/catchments/areas_1h.nc") as series:
         assert series.attrs["featureType"] == "timeSeries"
