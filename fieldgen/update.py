@@ -18,7 +18,7 @@ from fieldgen.readers.network import Network, read_network
 from fieldgen.settings import Settings, read_settings
 from fieldgen.upkeep.day_record import DayRecord, forget_day, read_day_record, recorded_days
 from fieldgen.upkeep.fingerprint import Fingerprints, fingerprint_maps
-from fieldgen.upkeep.inputs import list_inputs, unchanged_days, write_inputs
+from fieldgen.upkeep.inputs import Standing, list_inputs, read_standing, write_inputs
 from fieldgen.upkeep.lock import STATE, hold
 
 OUTCOME = "last_update.json"
@@ -55,9 +55,9 @@ def _update_held(
     path: Path, settings: Settings, folder: Path, jobs: int, log: Log, begun: float
 ) -> list[str]:
     inputs = list_inputs(path, settings)
-    days = unchanged_days(folder, inputs)
-    if days is not None and _stands(folder, settings, days):
-        log.info("nothing_new", days=len(days))
+    standing = read_standing(folder, inputs)
+    if standing is not None and _stands(folder, standing):
+        log.info("nothing_new", days=len(standing.days))
         return []
     network = read_network(path)
     _log_reading(network, log)
@@ -77,8 +77,10 @@ def _update_held(
             files=len(report.files),
         )
     finish_run(plan.writer, [reports[day] for day in sorted(reports)])
-    _write_page(settings, folder, log)
-    write_inputs(folder, inputs, sorted(reports))
+    files = ["run.json"]
+    files += ["maps/latest.png"] * (settings.products.maps != "none")
+    files += _write_page(settings, folder, log)
+    write_inputs(folder, inputs, Standing(sorted(reports), files))
     log.info(
         "update_done",
         seconds=round(time.monotonic() - begun, 1),
@@ -88,27 +90,27 @@ def _update_held(
     return [task.piece.name for task, _ in plan.tasks]
 
 
-def _stands(folder: Path, settings: Settings, days: list[str]) -> bool:
-    """Whether every file of these days is there, and what belongs to all of them."""
-    products = ["run.json"]
-    products += ["maps/latest.png"] * (settings.products.maps != "none")
-    products += [PAGE] * (settings.products.page != "none")
-    records = [read_day_record(folder, day) for day in days]
-    return all((folder / name).is_file() for name in products) and all(
+def _stands(folder: Path, standing: Standing) -> bool:
+    """Whether every file that the last update left is there."""
+    records = [read_day_record(folder, day) for day in standing.days]
+    return all((folder / name).is_file() for name in standing.files) and all(
         record is not None and record.lost_file(folder) is None for record in records
     )
 
 
-def _write_page(settings: Settings, folder: Path, log: Log) -> None:
-    """Write the forecaster's page anew; that it cannot be made does not stop the run."""
+def _write_page(settings: Settings, folder: Path, log: Log) -> list[str]:
+    """Write the forecaster's page anew and return its name; that it cannot be made does not stop
+    the run."""
     if settings.products.page == "none":
-        return
+        return []
     from fieldgen.products.page import write_page
 
     try:
         write_page(folder, folder / PAGE, settings.products.page)
     except InputError as error:
         log.warning("page_not_made", reason=str(error))
+        return []
+    return [PAGE]
 
 
 def _log_reading(network: Network, log: Log) -> None:

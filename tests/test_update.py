@@ -428,3 +428,20 @@ def test_a_week_of_operation_ends_as_one_run_over_the_complete_input(tmp_path):
     half = len(week.memory) // 2
     assert week.memory[-1] < 1.1 * week.memory[half]
     assert week.open_files[-1] == week.open_files[half]
+
+
+def test_the_page_is_kept_current_and_does_not_stop_a_run(tmp_path, monkeypatch):
+    """Negative control: a page that is too large is a warning, and nothing new stays nothing new."""
+    from fieldgen.products.page import file
+
+    path = scene(tmp_path, days=1)
+    edit(path, 'page = "none"', 'page = "6h"')
+    age(tmp_path)
+    run(path, tmp_path / "out")
+    assert "Test isle" in (tmp_path / "out/page.html").read_text()
+    (tmp_path / "out/page.html").unlink()
+    monkeypatch.setattr(file, "MOST_VALUES", 1)
+    made, log = run(path, tmp_path / "out")
+    assert made == []
+    assert "page_not_made" in [line["event"] for line in log]
+    assert run(path, tmp_path / "out")[1][-1]["event"] == "nothing_new"

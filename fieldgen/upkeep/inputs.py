@@ -6,6 +6,7 @@ import json
 import time
 from collections.abc import Iterator
 from pathlib import Path
+from typing import NamedTuple
 
 from pydantic import BaseModel
 
@@ -36,19 +37,26 @@ def list_inputs(path: Path, settings: Settings) -> dict:
     return {"fieldgen_version": fieldgen_version(), "files": files}
 
 
-def unchanged_days(folder: Path, inputs: dict) -> list[str] | None:
-    """Days that the last finished update stood for, if it found the same inputs, all of them long
-    at rest; None otherwise.
+class Standing(NamedTuple):
+    """What a finished update left: days with records, and files that belong to all of them."""
+
+    days: list[str]
+    files: list[str]
+
+
+def read_standing(folder: Path, inputs: dict) -> Standing | None:
+    """What the last finished update left, if it found the same inputs, all of them long at rest;
+    None otherwise.
 
     inputs : of `list_inputs`
     """
     try:
         before = json.loads(_path(folder).read_text(encoding="utf-8"))
-        days = before.pop("days")
-    except (OSError, ValueError, KeyError):
+        standing = Standing(**before.pop("standing"))
+    except (OSError, ValueError, KeyError, TypeError):
         return None
     at_rest = all(one is None or one[1] != UNSURE for one in inputs["files"].values())
-    return days if before == inputs and at_rest else None
+    return standing if before == inputs and at_rest else None
 
 
 def forget_inputs(folder: Path) -> None:
@@ -56,10 +64,11 @@ def forget_inputs(folder: Path) -> None:
     _path(folder).unlink(missing_ok=True)
 
 
-def write_inputs(folder: Path, inputs: dict, days: list[str]) -> None:
-    """Remember, when all `days` are made, what they were made from."""
+def write_inputs(folder: Path, inputs: dict, standing: Standing) -> None:
+    """Remember, when all is made, what it was made from."""
     with whole_file(_path(folder)) as temporary:
-        temporary.write_text(json.dumps(inputs | {"days": days}), encoding="utf-8")
+        content = inputs | {"standing": standing._asdict()}
+        temporary.write_text(json.dumps(content), encoding="utf-8")
 
 
 def _named_files(settings: Settings) -> Iterator[Path]:
