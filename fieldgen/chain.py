@@ -57,7 +57,8 @@ def make(
     """
     days = pieces_of(network, start, end)
     maps = network.settings.products.maps
-    tasks = [Task(day, maps_of_day(maps, day is days[-1])) for day in days]
+    newest = pieces_of(network, None, None)[-1].name
+    tasks = [Task(day, maps_of_day(maps, day.name == newest)) for day in days]
     with hold(folder):
         writer = DayWriter(
             DayMaker(network),
@@ -95,7 +96,7 @@ def finish_run(writer: DayWriter, reports: list[DayReport]) -> RunReport:
 
 
 def maps_of_day(maps: str, is_last: bool) -> str:
-    """Which maps a day draws: the latest one belongs to the last day."""
+    """Which maps a day draws: the latest one belongs to the last day of the input."""
     return "none" if maps == "latest" and not is_last else maps
 
 

@@ -160,13 +160,14 @@ class DayWriter:
         """Leave the day's record; maps that the day no longer has are removed."""
         piece = task.piece
         whole = task.maps == "latest" or piece.asked == slice(0, piece.last - piece.first)
-        maps = self.maker.network.settings
+        settings = self.maker.network.settings
         before = read_day_record(self.folder, piece.name)
         record = DayRecord(
             shared=self.fingerprints.shared,
+            length=self.fingerprints.length,
             window=self.fingerprints.of_steps(self.maker.rows(piece)),
             steps=self.fingerprints.stamps[piece.first : piece.last],
-            maps=fingerprint_maps(maps, self.limits) if whole else "",
+            maps=fingerprint_maps(settings, self.limits) if whole else "",
             files=sizes_of(self.folder, report.files),
             report=report,
         )

@@ -30,3 +30,7 @@ class BusyError(FieldgenError):
     """Another run is at work in the output folder."""
 
     exit_status = 3
+
+
+class ProcessError(FieldgenError):
+    """A process that shared the work was killed."""

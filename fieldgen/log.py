@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from contextlib import suppress
 from datetime import UTC, datetime
 from typing import TextIO
 
@@ -17,7 +18,7 @@ EVENTS = {
     "oddity": "{text}",
     "day_begun": "day {day} is to be made: {reason}",
     "day_made": "day {day} made: {made} of {steps} steps, {files} files",
-    "day_kept": "day {day} is kept as it is: the input of its first hours is gone",
+    "day_kept": "day {day} is kept as it is: the input of some of its hours is gone",
     "page_not_made": "the page is not made: {reason}",
     "update_done": "done in {seconds:.1f} s: {made} days made, {unchanged} unchanged",
     "failed": "{reason}",
@@ -51,4 +52,5 @@ class Log:
             line = json.dumps(about | fields)
         else:
             line = f"{time} {level:7} {printable(message)}"
-        print(line, file=self._stream, flush=True)
+        with suppress(OSError):  # a log that cannot be written must not stop the run
+            print(line, file=self._stream, flush=True)

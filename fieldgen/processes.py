@@ -8,6 +8,9 @@ import os
 import threading
 from collections.abc import Callable, Iterator
 from concurrent.futures import ProcessPoolExecutor
+from concurrent.futures.process import BrokenProcessPool
+
+from fieldgen.errors import ProcessError
 
 _work: Callable | None = None
 """What a process of the pool does, handed over once instead of with every day."""
@@ -19,8 +22,14 @@ def map_days(work: Callable, *arguments: list, jobs: int) -> Iterator:
     if workers <= 1:
         yield from map(work, *arguments)
         return
-    with ProcessPoolExecutor(workers, initializer=_take, initargs=(work,)) as pool:
-        yield from pool.map(_do, *arguments)
+    try:
+        with ProcessPoolExecutor(workers, initializer=_take, initargs=(work,)) as pool:
+            yield from pool.map(_do, *arguments)
+    except BrokenProcessPool:
+        raise ProcessError(
+            f"one of {workers} processes was killed, as the system does when memory is short. "
+            "Run again with fewer --jobs."
+        ) from None
 
 
 def _take(work: Callable) -> None:

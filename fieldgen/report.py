@@ -45,6 +45,7 @@ class DayReport:
     values_clipped: int
     pressure_sources: dict[str, int]
     barometers_rejected: dict[str, dict]
+    thermometers_rejected: dict[str, dict]
     barometers_doubtful: dict[str, dict]
     stations_condemned: dict[str, dict]
     steps_used: list[int]
@@ -68,6 +69,7 @@ def report_day(name: str, day: Day, fields: Fields, files: list[str]) -> DayRepo
             for source, code in PRESSURE_SOURCES.items()
         },
         barometers_rejected=_barometers(day),
+        thermometers_rejected=_thermometers(day),
         barometers_doubtful=_doubtful_barometers(day),
         stations_condemned=_condemned(day),
         steps_used=(day.stations.flag.values == 0).sum(axis=0).tolist(),
@@ -121,6 +123,13 @@ def _barometers(day: Day) -> dict[str, dict]:
             "difference": round(float(np.median(known)), 1) if len(known) else None,
         }
     return found
+
+
+def _thermometers(day: Day) -> dict[str, dict]:
+    """Steps in which a site's temperature is not used, because the others contradict it."""
+    steps = day.stations.thermometer_rejected.values.sum(axis=0)
+    sites = day.stations.site.values
+    return {str(sites[index]): {"steps": int(steps[index])} for index in np.flatnonzero(steps)}
 
 
 def _doubtful_barometers(day: Day) -> dict[str, dict]:
@@ -240,6 +249,7 @@ class RunReport:
         """One line for each barometer or station that the others contradict."""
         return [
             *(_barometer_warning(*one) for one in self._by_name("barometers_rejected")),
+            *(_thermometer_warning(*one) for one in self._by_name("thermometers_rejected")),
             *(_doubt_warning(*one) for one in self._by_name("barometers_doubtful")),
             *(_station_warning(*one) for one in self._by_name("stations_condemned")),
         ]
@@ -270,6 +280,11 @@ def _barometer_warning(site: str, days: list[dict]) -> str:
         f"{steps}{repeats}, where it reads {worst:+.1f} hPa against the others, as if its listed "
         f"height were wrong by {abs(worst) / HECTOPASCAL_PER_METRE:.0f} m"
     )
+
+
+def _thermometer_warning(site: str, days: list[dict]) -> str:
+    steps = sum(one["steps"] for one in days)
+    return f"thermometer {site}: not used in {steps} steps, where the others contradict it"
 
 
 def _doubt_warning(site: str, days: list[dict]) -> str:

@@ -10,7 +10,7 @@ from fieldgen.quantities import QUANTITIES
 from fieldgen.readers.network import Network
 from fieldgen.readers.places import sites_of
 from fieldgen.settings import RetrievalTable, Settings
-from fieldgen.station.barometers import barometer_bias, screen_barometers
+from fieldgen.station.barometers import barometer_bias, screen_barometers, screen_thermometers
 from fieldgen.station.delay import (
     common_sigma,
     conversion_factor,
@@ -132,6 +132,8 @@ def _air_at_antennas(settings: Settings, stations: xr.Dataset, weather: xr.Datas
     measured = Weather(
         weather.pressure.values, weather.temperature.values, weather.relative_humidity.values
     )
+    warm_or_cold = screen_thermometers(measured, barometers)
+    measured = measured._replace(temperature=np.where(warm_or_cold, np.nan, measured.temperature))
     sigma = settings.retrieval.barometer_sigma
     still = frozen_pressure(measured.pressure, 2 * frozen_steps(settings))
     moving = measured._replace(pressure=np.where(still, np.nan, measured.pressure))
@@ -154,7 +156,8 @@ def _air_at_antennas(settings: Settings, stations: xr.Dataset, weather: xr.Datas
         sigma_limit=settings.retrieval.pressure_sigma_limit,
     )
     by_step = {
-        "barometer_rejected": rejected, "barometer_residual": residual, "barometer_frozen": still
+        "barometer_rejected": rejected, "barometer_residual": residual, "barometer_frozen": still,
+        "thermometer_rejected": warm_or_cold,
     }  # fmt: skip
     whole = {
         "barometer_bias": bias.value, "barometer_bias_sigma": bias.sigma,

@@ -13,7 +13,7 @@ import xarray as xr
 from fieldgen.errors import InputError
 from fieldgen.station.screening import STATION_FLAGS
 from fieldgen.text_table import new_table, render
-from fieldgen.update import OUTCOME
+from fieldgen.update import CUT_OFF, OUTCOME
 from fieldgen.upkeep.lock import STATE, is_held, read_owner
 
 LATELY = np.timedelta64(24, "h")
@@ -75,8 +75,9 @@ def read_status(
     files = sorted((folder / "stations").glob("stations_*.nc"))[-DAYS_BACK:]
     if not files:
         raise InputError(f"{folder}: holds no station files, expected those of a run. Run update.")
-    newest = _newest_field(folder)
-    missing, count = _missing_stations(files)
+    damaged: list[str] = []
+    newest = _newest_field(folder, damaged)
+    missing, count = _missing_stations(files, newest, damaged)
     read = _read_json(folder / "run.json").get("read", {})
     age = None if newest is None else float((time - newest) / np.timedelta64(1, "h"))
     last_update = _read_json(folder / STATE / OUTCOME) or None
@@ -87,14 +88,14 @@ def read_status(
         age_hours=None if age is None else round(age, 2),
         stations=count,
         missing=missing,
-        rejected=_rejected_lately(files),
+        rejected=_rejected_lately(files, newest),
         unusable_files=read.get("unusable_files", {}),
         rejected_lines=[
             f"{one['where']}: {one['count']} x {one['reason']}" for one in read.get("rejected", [])
         ],
         last_update=last_update,
         running=str(read_owner(folder) or "a run") if is_held(folder) else None,
-        problems=[],
+        problems=damaged,
     )
     allowed = count // 4 if most_missing is None else most_missing
     status.problems.extend(_problems(status, most_age, allowed))
@@ -139,32 +140,48 @@ def _problems(status: Status, most_age: timedelta, most_missing: int) -> list[st
         found.append(f"the newest hour is {status.age_hours:.1f} h old, expected at most {limit:g}")
     if len(status.missing) > most_missing:
         found.append(f"{len(status.missing)} stations are missing, expected at most {most_missing}")
-    if status.last_update and status.last_update["outcome"] != "done":
-        found.append(f"the last update {status.last_update['outcome']}")
+    outcome = (status.last_update or {}).get("outcome", "done")
+    at_work = status.running and outcome == CUT_OFF
+    if outcome != "done" and not at_work:
+        found.append(f"the last update {outcome}")
     return found
 
 
-def _newest_field(folder: Path) -> np.datetime64 | None:
+def _open(path: Path, damaged: list[str] | None = None) -> xr.Dataset | None:
+    """Content of a product, None if it cannot be read, which is then told among the `damaged`."""
+    try:
+        with xr.open_dataset(path) as dataset:
+            return dataset.load()
+    except (OSError, ValueError, RuntimeError):
+        if damaged is not None:
+            damaged.append(f"{path.name} is damaged; update makes it anew")
+        return None
+
+
+def _newest_field(folder: Path, damaged: list[str]) -> np.datetime64 | None:
     """End of the newest hour that holds a value in the field files."""
     for path in sorted((folder / "fields").glob("pwv_*.nc"), reverse=True):
-        with xr.open_dataset(path) as fields:
-            made = np.isfinite(fields.scale_height.values)
-            if made.any():
-                return fields.time.values[made][-1].astype("datetime64[s]")
+        fields = _open(path, damaged)
+        if fields is not None and (made := np.isfinite(fields.scale_height.values)).any():
+            return fields.time.values[made][-1].astype("datetime64[s]")
     return None
 
 
-def _missing_stations(files: list[Path]) -> tuple[dict[str, str | None], int]:
-    """Stations of the newest file that are silent, with their last hour, and how many there are."""
+def _missing_stations(
+    files: list[Path], newest: np.datetime64 | None, damaged: list[str]
+) -> tuple[dict[str, str | None], int]:
+    """Stations of the newest file that are silent at the newest hour with a field, with the last
+    hour of each, and how many stations there are."""
     last: dict[str, np.datetime64 | None] = {}
-    newest = None
     for path in reversed(files):
-        with xr.open_dataset(path) as stations:
-            ids = [str(one) for one in stations.station_id.values]
-            time = stations.time.values.astype("datetime64[s]")
-            has_delay = (stations.flag.values & STATION_FLAGS["no_delay"]) == 0
-        if newest is None:
-            newest, last = time[-1], dict.fromkeys(ids)
+        stations = _open(path, damaged)
+        if stations is None:
+            continue
+        ids = [str(one) for one in stations.station_id.values]
+        time = stations.time.values.astype("datetime64[s]")
+        has_delay = (stations.flag.values & STATION_FLAGS["no_delay"]) == 0
+        last = last or dict.fromkeys(ids)
+        newest = time[-1] if newest is None else newest
         for station, reported in zip(ids, has_delay, strict=True):
             if station in last and last[station] is None and reported.any():
                 last[station] = time[reported][-1]
@@ -178,17 +195,18 @@ def _missing_stations(files: list[Path]) -> tuple[dict[str, str | None], int]:
     return missing, len(last)
 
 
-def _rejected_lately(files: list[Path]) -> dict[str, dict[str, int]]:
-    """Values that were there and not used in the last day, by station and reason."""
+def _rejected_lately(files: list[Path], newest: np.datetime64 | None) -> dict[str, dict[str, int]]:
+    """Values that were there and not used in the day before the newest hour with a field, by
+    station and reason."""
     counts: dict[str, dict[str, int]] = {}
-    since = None
-    for path in reversed(files[-2:]):
-        with xr.open_dataset(path) as stations:
-            time = stations.time.values
-            since = time[-1] - LATELY if since is None else since
-            flags = stations.flag.values[:, time > since]
-            ids = stations.station_id.values
-        for station, row in zip(ids, flags, strict=True):
+    if newest is None:
+        return counts
+    for path in files:
+        stations = _open(path)
+        if stations is None or stations.time.values[-1] <= newest - LATELY:
+            continue
+        flags = stations.flag.values[:, stations.time.values > newest - LATELY]
+        for station, row in zip(stations.station_id.values, flags, strict=True):
             for name, bit in STATION_FLAGS.items():
                 if name != "no_delay" and (steps := int(((row & bit) > 0).sum())):
                     reasons = counts.setdefault(str(station), {})
@@ -208,16 +226,19 @@ def _rejected_table(rejected: dict[str, dict[str, int]]) -> str:
 
 def _format_update(status: Status) -> str:
     last = status.last_update
-    text = "none yet" if last is None else f"{last['outcome']}, ended {last['ended']}"
+    text = "none yet"
+    if last is not None:
+        text = f"{last.get('outcome', '?')}, {last.get('ended', '?')}"
     return f"{text}; at work: {status.running}" if status.running else text
 
 
 def _read_json(path: Path) -> dict:
     """Content of a JSON file, empty if there is none that can be read."""
     try:
-        return json.loads(path.read_text(encoding="utf-8"))
+        content = json.loads(path.read_text(encoding="utf-8"))
     except (OSError, ValueError):
         return {}
+    return content if isinstance(content, dict) else {}
 
 
 def _text(time) -> str:

@@ -60,14 +60,15 @@ def format_check(network: Network, stations: xr.Dataset) -> str:
             }
         ),
     ]
-    barometers = [
-        f"barometer {site}: contradicts the others in {count} steps"
+    contradicted = [
+        f"{sensor} {site}: contradicts the others in {count} steps"
+        for sensor in ("barometer", "thermometer")
         for site, count in zip(
-            stations.site.values, stations.barometer_rejected.values.sum(axis=0), strict=True
+            stations.site.values, stations[f"{sensor}_rejected"].values.sum(axis=0), strict=True
         )
         if count
     ]
-    return "\n".join([*lines, _format_reading(report), *barometers]).rstrip()
+    return "\n".join([*lines, _format_reading(report), *contradicted]).rstrip()
 
 
 def _format_sources(counts: dict[str, int]) -> str:

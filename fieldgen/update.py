@@ -4,25 +4,31 @@ from __future__ import annotations
 
 import json
 import time
+from contextlib import suppress
 from dataclasses import dataclass, replace
 from datetime import UTC, datetime
 from pathlib import Path
 
+import numpy as np
+
 from fieldgen.chain import finish_run, make_days, maps_of_day, pieces_of
 from fieldgen.day_maker import DayMaker, DayWriter, Task, colour_limits
-from fieldgen.errors import FieldgenError, InputError
+from fieldgen.errors import FieldgenError, InputError, OutputError
 from fieldgen.log import Log
 from fieldgen.period import Piece
 from fieldgen.products.atomic import whole_file
 from fieldgen.readers.network import Network, read_network
 from fieldgen.settings import Settings, read_settings
 from fieldgen.upkeep.day_record import DayRecord, forget_day, read_day_record, recorded_days
-from fieldgen.upkeep.fingerprint import Fingerprints, fingerprint_maps
+from fieldgen.upkeep.fingerprint import NOTHING, Fingerprints, fingerprint_maps
 from fieldgen.upkeep.inputs import Standing, list_inputs, read_standing, write_inputs
 from fieldgen.upkeep.lock import STATE, hold
 
 OUTCOME = "last_update.json"
 """File, in the folder's state, that says how the last update ended."""
+
+CUT_OFF = "was cut off"
+"""Outcome while an update is at work; it stays where the update is killed."""
 
 PAGE = "page.html"
 
@@ -42,10 +48,12 @@ def update(path: str | Path, folder: Path, *, jobs: int = 1, log: Log) -> list[s
     settings = read_settings(path)
     with hold(folder):
         log.info("update_begun", network=str(path), folder=str(folder))
+        _write_outcome(folder, begun, CUT_OFF, 0)
         try:
             made = _update_held(path, settings, folder, jobs, log, begun)
         except FieldgenError as error:
-            _write_outcome(folder, begun, f"failed: {error}", 0)
+            with suppress(OutputError):  # on a full disk the first error is the one to be told
+                _write_outcome(folder, begun, f"failed: {error}", 0)
             raise
         _write_outcome(folder, begun, "done", len(made))
         return made
@@ -165,7 +173,7 @@ class _Plan:
         prints = writer.fingerprints
         if lost := record.lost_file(writer.folder):
             self.tasks.append((task, f"{lost} is gone or was changed"))
-        elif record.steps[0] < prints.stamps[day.first]:
+        elif _has_lost_input(record, prints):
             self.kept.append(day.name)
             self.standing[day.name] = record.report
         elif reason := _what_changed(record, prints, writer.maker.rows(day)):
@@ -184,15 +192,30 @@ def _forget_removed_days(folder: Path, days: set[str]) -> None:
             forget_day(folder, day)
 
 
+def _has_lost_input(record: DayRecord, prints: Fingerprints) -> bool:
+    """Whether steps of the day that had delays have none any more: made again, it would lose them.
+
+    After a change of the length of a step only the beginning of the input can tell.
+    """
+    now = dict(zip(prints.stamps, prints.steps, strict=True))
+    if record.length != prints.length:
+        return _begin(record.steps[0], record.length) < _begin(prints.stamps[0], prints.length)
+    had = (stamp for stamp in record.steps if record.window[stamp] != NOTHING)
+    return any(now.get(stamp, NOTHING) == NOTHING for stamp in had)
+
+
+def _begin(stamp: str, length: int) -> np.datetime64:
+    """Begin of the step of so many minutes that ends at a stamp."""
+    return np.datetime64(stamp, "m") - np.timedelta64(length, "m")
+
+
 def _what_changed(record: DayRecord, prints: Fingerprints, rows: slice) -> str | None:
-    """What a day was made from that is not the same now; steps before the input do not count."""
+    """What a day was made from that is not the same now; steps whose delays were put away do not
+    count."""
     if record.shared != prints.shared:
         return "the settings, the stations, the terrain or fieldgen changed"
-    now = prints.of_steps(rows)
-    before = {stamp: one for stamp, one in record.window.items() if stamp >= prints.stamps[0]}
-    changed = sorted(
-        stamp for stamp in now.keys() | before.keys() if now.get(stamp) != before.get(stamp)
-    )
+    now = {stamp: one for stamp, one in prints.of_steps(rows).items() if one != NOTHING}
+    changed = sorted(stamp for stamp, one in now.items() if record.window.get(stamp) != one)
     return f"{len(changed)} steps changed, from {changed[0]}" if changed else None
 
 

@@ -237,7 +237,8 @@ def test_station_error_counts_what_all_stations_share():
     network = fieldgen.read_network(DEMO / "network.toml")
     stations = retrieve_water_vapour(network, slice(0, 6))
     pwv = stations.pwv.values
-    relative = 4.74 / stations.mean_temperature.values  # of Tm, Bevis et al. 1992
+    tm_rms = network.settings.retrieval.mean_temperature_model.rms
+    relative = tm_rms / stations.mean_temperature.values
     common = np.hypot(network.settings.retrieval.common_sigma, relative * pwv)
     whole = np.hypot(stations.pwv_independent_sigma.values, common)
     known = np.isfinite(pwv)

@@ -1,6 +1,7 @@
 """`status`: what it says of a folder, and its exit status."""
 
 import json
+import shutil
 from datetime import timedelta
 
 import numpy as np
@@ -104,3 +105,30 @@ def test_a_folder_without_products_is_one_clear_error(tmp_path):
     """Negative control."""
     with pytest.raises(InputError, match="holds no station files"):
         read_status(tmp_path, TIME)
+
+
+@pytest.mark.parametrize(
+    ("name", "content"),
+    [
+        ("stations/stations_20260301.nc", b"half"),
+        ("fields/pwv_20260301.nc", b""),
+        ("run.json", b"[1]"),
+        (".fieldgen/last_update.json", b'{"x": 1}'),
+        (".fieldgen/inputs.json", b"[]"),
+    ],
+)
+def test_damaged_files_are_told_not_met_with_a_traceback(folder, tmp_path, name, content, capsys):
+    """Negative control: the command that finds faults must survive them."""
+    out = tmp_path / "out"
+    shutil.copytree(folder / "out", out)
+    (out / name).write_bytes(content)
+    arguments = [str(folder / "network.toml"), "--out", str(out)]
+    status = main(["status", *arguments, "--at", "2026-03-01T14:00"])
+    told = capsys.readouterr().out
+    if name.endswith(".nc"):
+        assert status == ATTENTION
+        assert f"{name.split('/')[1]} is damaged" in told
+    else:
+        assert status == 0
+    assert main(["update", *arguments, "--jobs", "1"]) == 0
+    assert main(["status", *arguments, "--at", "2026-03-01T14:00"]) == 0

@@ -1,5 +1,6 @@
 """`update`: what it makes, what it leaves alone, and what it survives."""
 
+import io
 import json
 import multiprocessing
 import os
@@ -17,8 +18,9 @@ import xarray as xr
 
 from fieldgen.chain import make
 from fieldgen.cli import main
-from fieldgen.errors import BusyError, OutputError
+from fieldgen.errors import BusyError, OutputError, ProcessError
 from fieldgen.log import Log
+from fieldgen.processes import map_days
 from fieldgen.readers.network import read_network
 from fieldgen.update import update
 from fieldgen.upkeep.lock import hold, is_held, read_owner
@@ -431,7 +433,7 @@ def test_a_week_of_operation_ends_as_one_run_over_the_complete_input(tmp_path):
 
 
 def test_the_page_is_kept_current_and_does_not_stop_a_run(tmp_path, monkeypatch):
-    """Negative control: a page that is too large is a warning, and nothing new stays nothing new."""
+    """Negative control: a page that is too large is a warning, once."""
     from fieldgen.products.page import file
 
     path = scene(tmp_path, days=1)
@@ -445,3 +447,71 @@ def test_the_page_is_kept_current_and_does_not_stop_a_run(tmp_path, monkeypatch)
     assert made == []
     assert "page_not_made" in [line["event"] for line in log]
     assert run(path, tmp_path / "out")[1][-1]["event"] == "nothing_new"
+
+
+def test_a_file_that_vanishes_from_the_middle_does_not_spoil_its_day(tmp_path):
+    """Negative control: with one record of the day left in the next file, too."""
+    path = scene(tmp_path, days=3)
+    first = (tmp_path / "delays/001.csv").read_text().splitlines()
+    with (tmp_path / "delays/002.csv").open("a") as later:
+        later.write(first[1].replace(",0.7,", ",0.7,") + "\n")
+    run(path, tmp_path / "out")
+    before = snapshot(tmp_path / "out")
+    (tmp_path / "delays/001.csv").unlink()
+    made, log = run(path, tmp_path / "out")
+    assert "20260302" not in made
+    assert [line["day"] for line in log if line["event"] == "day_kept"] == ["20260302"]
+    after = snapshot(tmp_path / "out")
+    assert after["fields/pwv_20260302.nc"] == before["fields/pwv_20260302.nc"]
+
+
+def test_another_time_step_makes_all_days_anew(tmp_path):
+    """Round trip: longer steps have other stamps, which is no loss of input."""
+    path = scene(tmp_path, days=2)
+    run(path, tmp_path / "out")
+    edit(path, 'time_step = "6h"', 'time_step = "8h"')
+    assert run(path, tmp_path / "out")[0] == ["20260301", "20260302"]
+    make(read_network(path), tmp_path / "whole")
+    assert_same_products(tmp_path / "out", tmp_path / "whole")
+
+
+def test_a_make_of_an_earlier_period_leaves_the_latest_map(tmp_path):
+    """Negative control: with products.maps = "latest"."""
+    path = scene(tmp_path, days=2, maps="latest")
+    run(path, tmp_path / "out")
+    before = (tmp_path / "out/maps/latest.png").read_bytes()
+    make(read_network(path), tmp_path / "out", start="2026-03-01", end="2026-03-01T12:00")
+    assert (tmp_path / "out/maps/latest.png").read_bytes() == before
+
+
+def test_a_log_that_cannot_be_written_does_not_stop_the_run(tmp_path):
+    """Negative control: /dev/full refuses every byte."""
+    path = scene(tmp_path, days=1)
+    number = os.open("/dev/full", os.O_WRONLY)
+    log = Log(io.TextIOWrapper(io.FileIO(number, "w", closefd=False), write_through=True))
+    assert update(path, tmp_path / "out", log=log) == ["20260301"]
+    os.close(number)
+
+
+def _die(_):
+    os.kill(os.getpid(), signal.SIGKILL)
+
+
+def test_a_killed_worker_is_one_clear_error():
+    """Negative control: as when memory is short."""
+    with pytest.raises(ProcessError, match="was killed"):
+        list(map_days(_die, [1, 2], jobs=2))
+
+
+def test_an_update_that_was_cut_off_is_told(tmp_path):
+    """Round trip: the outcome says so from the beginning, until the end."""
+    path = scene(tmp_path, days=2, maps="all")
+    process = begin(path, tmp_path / "out")
+    outcome = tmp_path / "out/.fieldgen/last_update.json"
+    while not outcome.exists() and process.is_alive():
+        time.sleep(0.01)
+    os.kill(process.pid, signal.SIGKILL)
+    process.join()
+    assert json.loads(outcome.read_text())["outcome"] == "was cut off"
+    run(path, tmp_path / "out")
+    assert json.loads(outcome.read_text())["outcome"] == "done"

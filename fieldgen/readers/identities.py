@@ -45,7 +45,8 @@ class Identities:
 
 @dataclass
 class _Place:
-    """A place of a code, from the statements that agree on it; the newest one counts."""
+    """A place of a code, from the statements that agree on it; the oldest one counts, so that a new
+    file, whose coordinates differ by millimetres, does not change what was made before."""
 
     site: Site
     first: float
@@ -54,11 +55,19 @@ class _Place:
     """Number of the newest of its statements."""
     name: str = ""
 
-    def take(self, stay: Stay, number: int) -> None:
-        """Take in the statement of this number."""
-        newer, older = (stay.site, self.site) if number > self.newest else (self.site, stay.site)
-        self.site, self.newest = _filled(newer, older), max(number, self.newest)
-        self.first, self.last = min(self.first, stay.first), max(self.last, stay.last)
+    def agree(self, stay: Stay, number: int) -> None:
+        """Take in a statement of this number that agrees."""
+        self.site, self.newest = _filled(self.site, stay.site), max(number, self.newest)
+        self._extend(stay)
+
+    def dispute(self, other: _Place) -> None:
+        """Take in a place that disagrees; the newer of the two is used."""
+        if other.newest > self.newest:
+            self.site, self.newest = _filled(other.site, self.site), other.newest
+        self._extend(other)
+
+    def _extend(self, other: Stay | _Place) -> None:
+        self.first, self.last = min(self.first, other.first), max(self.last, other.last)
 
 
 def tell_apart(
@@ -198,7 +207,7 @@ def _grouped(said: list[Stay]) -> list[_Place]:
                 place = _Place(*stay, number)
                 places.append(place)
             known[key] = place
-        place.take(stay, number)
+        place.agree(stay, number)
     return sorted(places, key=lambda place: (place.first, place.last))
 
 
@@ -210,7 +219,7 @@ def _clusters(places: list[_Place]) -> list[_Place]:
         if same is None:
             apart.append(place)
         else:
-            same.take(Stay(place.site, place.first, place.last), place.newest)
+            same.dispute(place)
     return apart
 
 
@@ -272,14 +281,14 @@ def _is_placed(site: Site) -> bool:
     return any(value == value for value in _numbers_of(site))  # NaN is not equal to itself
 
 
-def _filled(site: Site, older: Site) -> Site:
-    """A place, with what it does not say taken from an older statement of the same place."""
+def _filled(site: Site, other: Site) -> Site:
+    """A place, with what it does not say taken from another statement of the same place."""
     kept = {
-        name: getattr(older, name)
+        name: getattr(other, name)
         for name in ("longitude", "latitude", "ellipsoidal_height", "msl_height")
         if np.isnan(getattr(site, name))
     }
-    return replace(site, **kept, name=site.name or older.name) if kept or not site.name else site
+    return replace(site, **kept, name=site.name or other.name) if kept or not site.name else site
 
 
 def _apart(one: Site, other: Site) -> tuple[float, float]:

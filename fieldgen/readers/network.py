@@ -176,7 +176,7 @@ def find_files(settings: Settings, kind: str, report: ReadingReport) -> list[Pat
     """Files that the patterns of ``stations.<kind>`` name, sorted, each once.
 
     A pattern that names no file is reported as a warning, so that a run goes on with the others;
-    InputError if none of the patterns names any.
+    InputError if none of the patterns of a kind that is needed names any.
     """
     patterns = getattr(settings.stations, kind)
     found = {
@@ -189,10 +189,16 @@ def find_files(settings: Settings, kind: str, report: ReadingReport) -> list[Pat
         for pattern, some in found.items()
         if not some
     ]
-    if empty and not files:
+    if empty and not files and is_needed(settings, kind):
         raise InputError(f"{empty[0]}.")
     report.warnings.extend(empty)
     return [settings.path(name) for name in files]
+
+
+def is_needed(settings: Settings, kind: str) -> bool:
+    """Whether a run without any file of ``stations.<kind>`` is of no use: without delays, or
+    without barometers where no weather grid is named."""
+    return kind == "delays" or (kind == "weather" and not settings.stations.grids)
 
 
 def _read_files(
@@ -201,7 +207,7 @@ def _read_files(
     """Records of all files of a kind, oldest file first; a file without anything usable, or one
     that is gone by now, is reported and passed over.
 
-    Raises InputError if no file at all could be used.
+    Raises InputError if no file at all of a kind that is needed could be used.
     """
     files = find_files(settings, kind, report)
     tables = []
@@ -218,7 +224,7 @@ def _read_files(
         report.warnings.extend(f"{name}: {warning}" for warning in records.warnings)
         records.compact()
         tables.append(records)
-    if files and not tables:
+    if files and not tables and is_needed(settings, kind):
         raise InputError(
             f"stations.{kind}: none of the {len(files)} files can be used. The first: "
             f"{next(iter(report.unusable_files.values()))}"

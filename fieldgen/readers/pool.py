@@ -9,8 +9,9 @@ import numpy as np
 from fieldgen.readers.identities import Identities
 from fieldgen.readers.records import Records, Rejections
 
-FARTHEST_EPOCH = 20 * 366
-"""Records this many days from the median day are wrong; a time grid up to them would be huge."""
+FARTHEST_EPOCH = 15 * 366
+"""Records this many days from the median day are wrong: a receiver that counts GPS weeks with ten
+bits is off by 7168 days, and a time grid up to them would be huge."""
 
 FAR_EPOCH = "epoch far from all others"
 
@@ -27,7 +28,7 @@ def oldest_first(tables: list[Records]) -> list[Records]:
 
 
 def drop_far_epochs(tables: list[Records], rejections: Rejections) -> None:
-    """Take out, and count by file, records further than 20 years from the median epoch of all."""
+    """Take out, and count by file, records further than 15 years from the median epoch of all."""
     if not tables:
         return
     days = [records.time.astype("M8[D]").astype(np.int32) for records in tables]

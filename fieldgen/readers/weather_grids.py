@@ -79,6 +79,9 @@ _LEVELS = ("air_pressure", "altitude", "model_level_number", "depth", "geopotent
 HIGHEST_THERMOMETER = 10.0
 """Height above the ground [m] up to which an air temperature is that of a screen."""
 
+TIMEOUT_S = 600
+"""A decoder that takes longer hangs."""
+
 
 class GridField(NamedTuple):
     """A quantity at the places: time (m,) datetime64[s], NaT where it never changes; values
@@ -228,7 +231,11 @@ def _read_grib(path, name: str, longitude, latitude) -> list[GridField]:
     with tempfile.TemporaryDirectory() as folder:
         output = Path(folder) / "fields.npz"
         command = [sys.executable, "-m", "fieldgen.readers.grib_decoder", str(path), str(output)]
-        done = subprocess.run([*command, *map(str, box)], capture_output=True, text=True)
+        command += map(str, box)
+        try:
+            done = subprocess.run(command, capture_output=True, text=True, timeout=TIMEOUT_S)
+        except subprocess.TimeoutExpired:
+            raise InputError(f"{name}: GRIB is not decoded after {TIMEOUT_S} s.") from None
         if not output.exists():
             problem = (done.stderr.strip().splitlines() or ["no reason given"])[-1]
             raise InputError(f"{name}: GRIB cannot be decoded: {problem}.")
@@ -376,7 +383,9 @@ def _netcdf_way(dataset: xr.Dataset, array: xr.DataArray, where: str, longitude,
     if y is not None and x is not None and y.ndim == x.ndim == 1 and y.dims != x.dims:
         centre = _centre(longitude)
         axes = y.values, _near(x.values, centre)
-        return _axes_way(array, (y.dims[0], x.dims[0]), axes, (latitude, _near(longitude, centre)))
+        return _axes_way(
+            array, where, (y.dims[0], x.dims[0]), axes, (latitude, _near(longitude, centre))
+        )
     if all(axis is not None for axis in mapped) and "grid_mapping" in array.attrs:
         at = _in_crs(dataset, array, where, longitude, latitude)
         scale = [1000.0 if axis.attrs.get("units") == "km" else 1.0 for axis in mapped]
@@ -384,7 +393,7 @@ def _netcdf_way(dataset: xr.Dataset, array: xr.DataArray, where: str, longitude,
         if mapped[1].attrs.get("standard_name") == "grid_longitude":
             centre = _centre(at[0])
             axes[1], at = _near(axes[1], centre), (_near(at[0], centre), at[1])
-        return _axes_way(array, tuple(axis.dims[0] for axis in mapped), axes, at[::-1])
+        return _axes_way(array, where, tuple(axis.dims[0] for axis in mapped), axes, at[::-1])
     if y is not None and x is not None and y.ndim and y.dims == x.dims:
         index, interpolate = _scattered(x.values, y.values, longitude, latitude)
         shape = tuple(array.sizes[dim] for dim in y.dims)
@@ -399,8 +408,14 @@ def _netcdf_way(dataset: xr.Dataset, array: xr.DataArray, where: str, longitude,
     )
 
 
-def _axes_way(array: xr.DataArray, dims, axes, at):
+def _axes_way(array: xr.DataArray, where: str, dims, axes, at):
     """Cells around the places on two axes, south to north, west to east, and their way."""
+    for dim, axis in zip(dims, axes, strict=True):
+        if not (np.isfinite(axis).all() and len(np.unique(axis)) == len(axis)):
+            raise InputError(
+                f"{where}: the axis {dim} has values that are missing or stand twice, expected "
+                "those of a grid."
+            )
     windows = [_window(axis, places) for axis, places in zip(axes, at, strict=True)]
     cells = dict(zip(dims, windows, strict=True))
     swapped = array.dims.index(dims[0]) > array.dims.index(dims[1])
@@ -480,8 +495,12 @@ def _on_steps(fields: list[GridField], count: int, stamps, step, gap):
     merged: dict[np.datetime64, np.ndarray] = {}
     for one in fields:
         for moment, row in zip(one.time, one.values, strict=True):
+            if np.isnat(moment):
+                continue
             before = merged.get(moment, row)
             merged[moment] = np.where(np.isfinite(row), row, before)
+    if not merged:
+        return np.full((len(stamps), count), np.nan)
     moments = np.array(sorted(merged))
     values = np.array([merged[moment] for moment in moments])
     parts = (np.arange(PARTS_OF_A_STEP) + 0.5) / PARTS_OF_A_STEP

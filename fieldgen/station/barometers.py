@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import NamedTuple
 
 import numpy as np
@@ -11,10 +12,12 @@ from fieldgen.kriging.solver import Kriging
 from fieldgen.station.series import column_median
 from fieldgen.station.surface_air import (
     PRESSURE_COVARIANCE,
+    TEMPERATURE_COVARIANCE,
     Sites,
     Weather,
     drift_of_pressure,
     pressure_at_level,
+    temperature_at_level,
     usual_variance,
 )
 
@@ -26,6 +29,10 @@ COSTLY = 4.0
 
 NOTABLE = 3.0
 """A lasting difference is told when it is this many times its standard error."""
+
+THERMOMETER_LIMIT = 8.0
+"""A temperature this far [K] from the others at its height is suspect: inversions and sheltered
+valleys differ by less. Common practice, no source."""
 
 FEWEST = 3
 """Barometers that can contradict one."""
@@ -55,17 +62,43 @@ def screen_barometers(weather: Weather, barometers: Sites, barometer_sigma: floa
         for drift in ("constant", "linear")
     }
     for hour, values in enumerate(at_level):
-        values = values.copy()
-        while (count := np.isfinite(values).sum()) >= 3:
-            kriging = krigings[drift_of_pressure(count)]
-            residual, sigma = kriging.leave_one_out(values, kriging.gaps(np.isnan(values)))
-            residuals[hour] = np.where(np.isfinite(residual), residual, residuals[hour])
-            suspect = (np.abs(residual) > limit) & (np.abs(residual) > SURE * sigma)
-            if not suspect.any():
-                break
-            worst = np.argmax(np.where(suspect, np.abs(residual), -1.0))
-            rejected[hour, worst] = True
-            values[worst] = np.nan
+        found = _contradicted(values, lambda count: krigings[drift_of_pressure(count)], limit)
+        rejected[hour], residuals[hour] = found
+    return rejected, residuals
+
+
+def screen_thermometers(weather: Weather, sites: Sites):
+    """Temperatures (t, s) bool that differ from the others' at one level by more than
+    `THERMOMETER_LIMIT`, and by more than `SURE` times what weather and the way explain; the worst
+    goes first. A wrong one would warm or cool every station around it."""
+    rejected = np.zeros(weather.temperature.shape, bool)
+    if not len(sites.height):
+        return rejected
+    at_level, error = temperature_at_level(weather, sites, sites.height.mean())
+    kriging = _kriging(TEMPERATURE_COVARIANCE, error, sites, "constant")
+    for hour, values in enumerate(at_level):
+        rejected[hour], _ = _contradicted(values, lambda count: kriging, THERMOMETER_LIMIT)
+    return rejected
+
+
+def _contradicted(values, kriging_of: Callable[[int], Kriging], limit: float):
+    """Values (s,) of one step that the others contradict, bool, and the residuals (s,).
+
+    kriging_of : for a number of values present
+    """
+    values = values.copy()
+    rejected = np.zeros(len(values), bool)
+    residuals = np.full(len(values), np.nan)
+    while (count := int(np.isfinite(values).sum())) >= FEWEST:
+        kriging = kriging_of(count)
+        residual, sigma = kriging.leave_one_out(values, kriging.gaps(np.isnan(values)))
+        residuals = np.where(np.isfinite(residual), residual, residuals)
+        suspect = (np.abs(residual) > limit) & (np.abs(residual) > SURE * sigma)
+        if not suspect.any():
+            break
+        worst = np.argmax(np.where(suspect, np.abs(residual), -1.0))
+        rejected[worst] = True
+        values[worst] = np.nan
     return rejected, residuals
 
 

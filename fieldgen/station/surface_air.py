@@ -176,8 +176,7 @@ def surface_temperature(weather: Weather, barometers: Sites, antennas: Sites):
     if not known.any():
         return temperature, sigma
     level = barometers.height.mean()
-    at_level = weather.temperature + STANDARD_LAPSE_RATE.value * (barometers.height - level)
-    error = THERMOMETER_SIGMA**2 + (LAPSE_RATE_SIGMA * (barometers.height - level)) ** 2
+    at_level, error = temperature_at_level(weather, barometers, level)
     field, variance = _krige_hours(
         TEMPERATURE_COVARIANCE, at_level[known], error, barometers, antennas, "constant"
     )
@@ -185,6 +184,14 @@ def surface_temperature(weather: Weather, barometers: Sites, antennas: Sites):
     temperature[known] = field - STANDARD_LAPSE_RATE.value * way
     sigma[known] = np.sqrt(variance + (LAPSE_RATE_SIGMA * way) ** 2)
     return temperature, sigma
+
+
+def temperature_at_level(weather: Weather, sites: Sites, level: float):
+    """Temperatures (t, s) [K] brought to the height `level` [m], and their error variance (s,)
+    [K2]."""
+    way = sites.height - level
+    error = THERMOMETER_SIGMA**2 + (LAPSE_RATE_SIGMA * way) ** 2
+    return weather.temperature + STANDARD_LAPSE_RATE.value * way, error
 
 
 def pressure_at_level(weather: Weather, barometers: Sites, level: float, barometer_sigma: float):

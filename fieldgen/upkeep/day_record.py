@@ -16,6 +16,7 @@ class DayRecord:
     """A day as it was made.
 
     shared : fingerprint of what all days share
+    length : of a step [min]
     window : fingerprints by stamp of the steps that the day was made from
     steps : stamps of the day's own steps
     maps : fingerprint of the maps' colours and lines; empty where not all maps were drawn
@@ -23,6 +24,7 @@ class DayRecord:
     """
 
     shared: str
+    length: int
     window: dict[str, str]
     steps: list[str]
     maps: str

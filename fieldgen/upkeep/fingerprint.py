@@ -18,17 +18,22 @@ from fieldgen.settings import Settings
 _LENGTH = 8
 """Bytes of a fingerprint: two of a million hours agree by chance once in ten million."""
 
+NOTHING = ""
+"""Fingerprint of a step without delays."""
+
 
 @dataclass(frozen=True)
 class Fingerprints:
     """Fingerprints of a network's input.
 
     shared : of the settings, the stations' places, the grid, the terrain and fieldgen's version
+    length : of a step [min]
     stamps : (t,) ends of the steps, UTC, such as 2026-09-08T05:00
-    steps : (t,) of the records of each step
+    steps : (t,) of the records of each step, NOTHING where no station has a delay
     """
 
     shared: str
+    length: int
     stamps: list[str]
     steps: list[str]
 
@@ -37,7 +42,14 @@ class Fingerprints:
         """Fingerprints of all that a network's days are made from."""
         shared, by_step = _sort_content(network)
         stamps = np.datetime_as_string(network.delays.time.values, unit="m").tolist()
-        return cls(_digest(shared), stamps, [_digest(step) for step in by_step])
+        delays = network.delays
+        has_delay = np.isfinite(delays.ztd.values) | np.isfinite(delays.pwv.values)
+        steps = [
+            _digest(step) if any_delay else NOTHING
+            for step, any_delay in zip(by_step, has_delay.any(axis=1), strict=True)
+        ]
+        length = int(network.settings.network.time_step.total_seconds() // 60)
+        return cls(_digest(shared), length, stamps, steps)
 
     def of_steps(self, rows: slice) -> dict[str, str]:
         """Fingerprints of some steps by their stamp."""
@@ -62,7 +74,7 @@ def _sort_content(network: Network) -> tuple[list[bytes], list[list[bytes]]]:
         network.terrain.points.tobytes(),
         network.terrain.is_sea.tobytes(),
     ]
-    by_step: list[list[bytes]] = [[] for _ in network.delays.time]
+    by_step: list[list[bytes]] = [[] for _ in range(network.delays.sizes["time"])]
     datasets = (getattr(network, field.name) for field in fields(network))
     for dataset in (one for one in datasets if isinstance(one, xr.Dataset)):
         for name in sorted(map(str, dataset.variables)):

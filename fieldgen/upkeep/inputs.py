@@ -53,7 +53,7 @@ def read_standing(folder: Path, inputs: dict) -> Standing | None:
     try:
         before = json.loads(_path(folder).read_text(encoding="utf-8"))
         standing = Standing(**before.pop("standing"))
-    except (OSError, ValueError, KeyError, TypeError):
+    except (OSError, ValueError, KeyError, TypeError, AttributeError):
         return None
     at_rest = all(one is None or one[1] != UNSURE for one in inputs["files"].values())
     return standing if before == inputs and at_rest else None

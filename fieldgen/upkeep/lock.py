@@ -22,6 +22,9 @@ from fieldgen.products.atomic import whole_file
 STATE = ".fieldgen"
 """Folder, within an output folder, of what runs tell each other."""
 
+MOMENT = 0.3
+"""Seconds that a run waits for the folder: `is_held` takes it for less than that."""
+
 
 class Owner(NamedTuple):
     """The run that holds a folder: process, host, since when (UTC, ISO 8601)."""
@@ -47,16 +50,10 @@ def hold(folder: Path) -> Iterator[None]:
     be written.
     """
     state = folder / STATE
+    lock = FileLock(state / "lock", timeout=MOMENT, thread_local=False)
     try:
         state.mkdir(parents=True, exist_ok=True)
-        lock = FileLock(state / "lock", timeout=0, thread_local=False)
-        with lock:
-            _write_owner(state)
-            _remove_leftovers(folder)
-            try:
-                yield
-            finally:
-                (state / "owner.json").unlink(missing_ok=True)
+        lock.acquire()
     except Timeout:
         owner = read_owner(folder)
         raise BusyError(
@@ -65,6 +62,13 @@ def hold(folder: Path) -> Iterator[None]:
         ) from None
     except OSError as error:
         raise OutputError(f"{folder}: cannot be written: {error.strerror or error}.") from None
+    try:
+        _write_owner(state)
+        _remove_leftovers(folder)
+        yield
+    finally:
+        (state / "owner.json").unlink(missing_ok=True)
+        lock.release()
 
 
 def read_owner(folder: Path) -> Owner | None:

@@ -1,11 +1,17 @@
 """Barometers against each other, in an analytic atmosphere with known answer."""
 
+from pathlib import Path
+
 import numpy as np
 import pytest
 
-from fieldgen.station.barometers import barometer_bias, screen_barometers
+from fieldgen.readers.network import read_network
+from fieldgen.retrieval import retrieve_water_vapour
+from fieldgen.station.barometers import barometer_bias, screen_barometers, screen_thermometers
 from fieldgen.station.surface_air import Sites
 from tests.station.test_surface_air import dry_weather, sites
+
+DEMO = Path(__file__).parents[2] / "demo_network"
 
 
 def test_screen_barometers_finds_the_wrong_height_and_only_that():
@@ -67,3 +73,29 @@ def test_barometer_bias_of_two_says_nothing():
     weather = dry_weather(barometers, hours=48)
     weather.pressure[:, 0] += 10.0
     assert not barometer_bias(weather, barometers, 0.3).rejected.any()
+
+
+@pytest.mark.parametrize("error", [-20.0, 20.0])
+def test_screen_thermometers_finds_the_wrong_one_and_only_that(error):
+    """Negative control: 20 K off at one of seven; 5 K, which a valley does, is left alone."""
+    barometers = sites([10.0, 200.0, 500.0, 900.0, 40.0, 1500.0, 300.0])
+    weather = dry_weather(barometers)
+    assert not screen_thermometers(weather, barometers).any()
+    weather.temperature[:, 4] += error
+    rejected = screen_thermometers(weather, barometers)
+    assert rejected[:, 4].all()
+    assert rejected.sum() == len(rejected)
+    weather.temperature[:, 4] -= error - np.sign(error) * 5.0
+    assert not screen_thermometers(weather, barometers).any()
+
+
+def test_a_wrong_thermometer_does_not_change_its_neighbours():
+    """Negative control on the demo: 20 K off at one site move no other station by 0.1 kg m-2."""
+    network = read_network(DEMO / "network.toml")
+    right = retrieve_water_vapour(network, slice(0, 6))
+    network.weather["temperature"][:, 0] += 20.0
+    wrong = retrieve_water_vapour(network, slice(0, 6))
+    assert wrong.thermometer_rejected.values[:, 0].all()
+    away = np.abs(wrong.pwv.values - right.pwv.values)
+    assert np.nanmax(away) < 0.3
+    assert np.nanmedian(away) < 0.01
