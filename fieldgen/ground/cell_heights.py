@@ -15,6 +15,10 @@ MOST_PIXELS = 50_000_000
 
 POINTS_AT_ONCE = 2_000_000
 
+LEAST_ALONG = 2
+"""Pixels along a part of a cell that are left when the raster is averaged: one alone would bring
+in too much of the cells beside it."""
+
 MOST_INNER = 8
 """Along each side of a part of a cell: 64 points tell the mean of a part that holds many pixels."""
 
@@ -29,14 +33,13 @@ def heights_in_cells(raster, grid: CellGrid, side: int, gap: float):
     """Heights (side * side, ny, nx) of the equal parts of each cell, those of gaps given.
 
     Each is the mean over points at most a pixel apart (an eighth of the part, at least), bilinear
-    between the pixels of the raster, which are averaged first where all parts are larger.
+    between the pixels of the raster, which are averaged first where all parts hold several.
     """
     ny, nx = grid.shape
     smallest = min(_part_sizes(raster, grid, rows, side).min() for rows in _samples(ny))
     window = _window_around(raster, grid)
-    factor = max(
-        1.0, np.floor(smallest + 0.05), np.sqrt(window.width * window.height / MOST_PIXELS)
-    )
+    fits = np.sqrt(window.width * window.height / MOST_PIXELS)
+    factor = max(1.0, np.floor(smallest / LEAST_ALONG), fits)
     pixels = _Pixels(raster, window, factor)
     heights = np.empty((side * side, ny, nx), np.float32)
     inner = MOST_INNER

@@ -161,7 +161,7 @@ class CellGrid:
 
 def near(longitude, middle: float):
     """Longitudes [degrees] counted so that they lie within 180 of the middle."""
-    return middle + (longitude - middle + 180.0) % 360.0 - 180.0
+    return longitude - 360.0 * np.rint((longitude - middle) / 360.0)
 
 
 def corners_of_nodes(nodes):
