@@ -170,7 +170,12 @@ def _check_kind(crs: pyproj.CRS, name: str, where) -> None:
 
 
 def uneven_cells(fields, where) -> CellGrid | None:
-    """Cells of a dataset of fields; None where they are evenly spaced along x and y."""
+    """Cells of a dataset of fields; None where they are evenly spaced along x and y.
+
+    Of cells that x and y do not tell, being rows and columns, the file lists the corners.
+    """
+    if "longitude" in fields.variables and "bounds" in fields["longitude"].attrs:
+        return grid_of(fields, where)
     if "x" in fields.variables and "y" in fields.variables:
         axes = [axis_of(fields, where, fields[letter], letter) for letter in "xy"]
         if all(axis.even and not axis.name.startswith("grid_") for axis in axes):

@@ -40,7 +40,7 @@ def on_even_grid(fields: xr.Dataset, where) -> xr.Dataset:
         if "y" not in variable.dims:
             if not {"x", "bounds"} & set(variable.dims) or "time" in variable.dims:
                 picture[name] = variable
-        elif variable.dims[-2:] == ("y", "x") and name not in picture.coords:
+        elif variable.dims[-2:] == ("y", "x") and name not in ("longitude", "latitude"):
             values = variable.values[..., row, column]
             values = np.where(inside, values, np.nan) if name in MASKED else values
             picture[name] = (variable.dims, values, variable.attrs)

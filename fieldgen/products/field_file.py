@@ -172,8 +172,12 @@ def _cell_coordinates(grid: Grid | CellGrid) -> dict:
 
 
 def _coordinates_of_places(grid: CellGrid) -> dict:
-    """Longitude and latitude (y, x) of each cell, and of its four corners."""
+    """Longitude and latitude (y, x) of each cell, and of its four corners; rows and columns."""
     coordinates = {}
+    for axis, what, count in zip("yx", ("row", "column"), grid.shape, strict=True):
+        about = {"long_name": f"{what} of the model's grid", "units": "1", "axis": axis.upper(),
+                 "coverage_content_type": "coordinate"}  # fmt: skip
+        coordinates[axis] = (axis, np.arange(count, dtype=np.int32), about)
     for name, centre, corner in (
         ("latitude", grid.y, grid.corner_y), ("longitude", grid.x, grid.corner_x)
     ):  # fmt: skip

@@ -51,6 +51,15 @@ def listed(longitude, latitude, bounds=None) -> xr.Dataset:
     return dataset
 
 
+def rotated(size=0.04) -> xr.Dataset:
+    """A file of 7 x 11 cells about the middle of a rotated system; size [degrees] of a cell."""
+    about = {axis: {"standard_name": f"grid_{name}", "units": "degrees"}
+             for axis, name in (("x", "longitude"), ("y", "latitude"))}  # fmt: skip
+    x, y = size * np.arange(-5, 6), size * np.arange(-3, 4)
+    dataset = xr.Dataset({"pole": ((), 0, ROTATED)})
+    return dataset.assign_coords({"x": ("x", x, about["x"]), "y": ("y", y, about["y"])})
+
+
 def pairs(edges):
     return np.stack([edges[:-1], edges[1:]], axis=1)
 
@@ -129,11 +138,7 @@ def test_a_rotated_grid_lies_where_proj_puts_it():
 
     1e-3: 0.2 degrees of a great circle, sides straight in the rotated system.
     """
-    about = {axis: {"standard_name": f"grid_{name}", "units": "degrees"}
-             for axis, name in (("x", "longitude"), ("y", "latitude"))}  # fmt: skip
-    x, y = np.arange(-1.0, 1.1, 0.2), np.arange(-0.6, 0.7, 0.2)
-    dataset = xr.Dataset({"pole": ((), 0, ROTATED)})
-    dataset = dataset.assign_coords({"x": ("x", x, about["x"]), "y": ("y", y, about["y"])})
+    dataset = rotated(0.2)
     grid = grid_of(dataset, "here")
     back = pyproj.Transformer.from_crs("EPSG:4326", pyproj.CRS.from_cf(ROTATED), always_xy=True)
     np.testing.assert_allclose(
