@@ -17,6 +17,7 @@ from fieldgen.fields import FIELD_FLAGS, CellMaker, Fields, make_fields_of_day
 from fieldgen.kriging.places import PlaceMaker, Places
 from fieldgen.memory import keep_freed_memory
 from fieldgen.period import Piece
+from fieldgen.products.even_picture import on_even_grid
 from fieldgen.products.field_file import packed_dataset, unpack_fields, write_fields
 from fieldgen.products.station_file import station_dataset, write_stations
 from fieldgen.readers.network import Network
@@ -184,7 +185,7 @@ class DayWriter:
 
         steps = task.piece.asked
         dataset, stations = dataset.isel(time=steps), stations.isel(time=steps)
-        dataset = unpack_fields(dataset)
+        dataset = on_even_grid(unpack_fields(dataset), "fields")
         if self.painter is None:
             self.painter = self._make_painter(dataset)
         drawn = (dataset, stations, self.folder / "maps", self.painter)

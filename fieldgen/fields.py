@@ -11,6 +11,7 @@ from dataclasses import dataclass, fields
 import numpy as np
 
 from fieldgen.analysis import Day, Model, Window
+from fieldgen.ground.cells import CellGrid
 from fieldgen.ground.grid import Grid
 from fieldgen.ground.terrain import Terrain
 from fieldgen.kriging.covariance import distances
@@ -106,7 +107,12 @@ class CellMaker:
     """The grid's cells in pieces, which one pass over a day takes one after the other."""
 
     def __init__(
-        self, grid: Grid, terrain: Terrain, maker: PlaceMaker, stations: Places, reference: float
+        self,
+        grid: Grid | CellGrid,
+        terrain: Terrain,
+        maker: PlaceMaker,
+        stations: Places,
+        reference: float,
     ):
         """stations : places of all stations of the network; reference : reference height [m]"""
         self.shape = grid.shape

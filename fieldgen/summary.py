@@ -45,7 +45,7 @@ def format_check(network: Network, stations: xr.Dataset) -> str:
     usable = (stations.flag.values == 0).mean()
     lines = [
         f"network   {network.settings.network.name}",
-        f"grid      {nx} x {ny} cells of {grid.spacing[0]:g} in {grid.crs.name}",
+        f"grid      {nx} x {ny} {grid.description}",
         f"terrain   {ground.min():.0f} to {ground.max():.0f} m in the mean of a cell, "
         f"{network.terrain.is_sea.mean():.0%} sea",
         f"stations  {len(heights)}, {heights.min():.0f} to {heights.max():.0f} m orthometric",

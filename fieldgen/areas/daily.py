@@ -36,7 +36,7 @@ COMMENTS = {
 
 METHODS = {"pwv_mean": "time: mean area: mean", "pwv_maximum": "area: mean time: maximum"}
 
-_KEPT = ("terrain", "terrain_sd", "crs", "x_bnds", "y_bnds")
+_KEPT = ("terrain", "terrain_sd")
 
 
 def write_daily(day: ProductDay, path: Path) -> None:
@@ -48,7 +48,7 @@ def write_daily(day: ProductDay, path: Path) -> None:
 def daily_dataset(day: ProductDay) -> xr.Dataset:
     """Dataset of `pwv_mean`, `pwv_maximum` and their sigmas; dimensions time (one), y, x."""
     source = day.fields.dataset
-    dataset = source[list(_KEPT)]
+    dataset = source[[*_KEPT, *day.fields.grid_variables]]
     for name in dataset.variables:
         dataset[name].encoding = {
             key: value for key, value in dataset[name].encoding.items() if key in ("dtype", "zlib")

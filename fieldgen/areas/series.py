@@ -9,7 +9,7 @@ import pyproj
 
 from fieldgen.areas.day import ProductDay
 from fieldgen.errors import InputError
-from fieldgen.ground.overlay import Overlap, corners_between, equal_area, overlap
+from fieldgen.ground.overlay import Overlap, equal_area, overlap
 from fieldgen.readers.areas import Areas
 
 LEAST_SHARE_OF_DAY = 0.75
@@ -82,10 +82,9 @@ def area_series(days: list[ProductDay], areas: Areas, every: str) -> AreaSeries:
 
 def find_overlaps(day: ProductDay, areas: Areas) -> list[Overlap]:
     """The cells under each area; raises InputError if there are none at all."""
-    dataset = day.fields.dataset
     plane = equal_area(*(float(part.mean()) for part in day.fields.longitude_latitude))
     to_plane = pyproj.Transformer.from_crs(day.fields.crs, plane, always_xy=True)
-    corners = to_plane.transform(*corners_between(dataset.x_bnds.values, dataset.y_bnds.values))
+    corners = to_plane.transform(*day.fields.cell_corners)
     found = [overlap(*corners, outline) for outline in areas.in_crs(plane)]
     if not any(len(one.cells) for one in found):
         raise InputError(

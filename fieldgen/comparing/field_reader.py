@@ -13,12 +13,14 @@ import numpy as np
 import pyproj
 import xarray as xr
 
-from fieldgen.errors import InputError
+from fieldgen.errors import GridError, InputError
+from fieldgen.ground.cells import CellGrid
+from fieldgen.ground.grid import uneven_cells
+from fieldgen.ground.overlay import corners_between
 from fieldgen.quantities import PACKED_STEP
 
 NEEDED = (
-    "pwv", "pwv_sigma", "flag", "terrain", "scale_height", "scale_height_sigma", "time_bnds", "x",
-    "y", "crs",
+    "pwv", "pwv_sigma", "flag", "terrain", "scale_height", "scale_height_sigma", "time_bnds", "crs",
 )  # fmt: skip
 """Variables of a field file that are used."""
 
@@ -57,6 +59,35 @@ class FieldFile:
     dataset: xr.Dataset
 
     @cached_property
+    def cells(self) -> CellGrid | None:
+        """Its cells where they are not evenly spaced; None where they are."""
+        return uneven_cells(self.dataset, self.path)
+
+    @property
+    def places(self):
+        """Coordinates x and y of the cells, one- or two-dimensional."""
+        grid = self.dataset if self.cells is None else self.cells
+        return np.asarray(grid.x), np.asarray(grid.y)
+
+    @property
+    def grid_variables(self) -> list[str]:
+        """Names of the variables, beside coordinates, that tell where the cells are."""
+        names = ("crs", "x_bnds", "y_bnds", "longitude_bnds", "latitude_bnds")
+        return [name for name in names if name in self.dataset.variables]
+
+    @property
+    def cell_corners(self):
+        """Corners x, y (ny, nx, 4) of the cells in the grid's CRS, in turn."""
+        if self.cells is not None:
+            return self.cells.corner_x, self.cells.corner_y
+        return corners_between(self.dataset.x_bnds.values, self.dataset.y_bnds.values)
+
+    def check_even(self, what: str) -> None:
+        """Raise GridError if the cells are not evenly spaced, which `what` needs."""
+        if self.cells is not None:
+            raise GridError(f"{self.path}: its grid is uneven; {what} needs an evenly spaced grid.")
+
+    @cached_property
     def steps(self):
         """Start and end (t,) datetime64[s] of each step."""
         return self.dataset.time_bnds.values.astype("datetime64[s]").T
@@ -81,6 +112,8 @@ class FieldFile:
     @cached_property
     def longitude_latitude(self):
         """Longitude and latitude (ny, nx) [degrees] of the cell centres."""
+        if self.cells is not None:
+            return self.cells.longitude_latitude
         to_degrees = pyproj.Transformer.from_crs(self.crs, "EPSG:4326", always_xy=True)
         return to_degrees.transform(*np.meshgrid(self.dataset.x.values, self.dataset.y.values))
 
@@ -89,6 +122,23 @@ class FieldFile:
 
         Between the outermost centres and the grid's edge the outermost cells count alone.
         """
+        row, column, inside = self._fraction(longitude, latitude)
+        count_y, count_x = self.terrain.shape
+        low_column, right = _split(column, count_x)
+        low_row, upper = _split(row, count_y)
+        return Corners(
+            np.stack([low_row, low_row, low_row + 1, low_row + 1]),
+            np.stack([low_column, low_column + 1, low_column, low_column + 1]),
+            np.stack([(1 - upper) * (1 - right), (1 - upper) * right,
+                      upper * (1 - right), upper * right]),
+        ), inside  # fmt: skip
+
+    def _fraction(self, longitude, latitude):
+        """Row and column (n,) of places, counted in cells from the first centre, and whether they
+        lie on the grid."""
+        if self.cells is not None:
+            x, y = self.cells.locate(longitude, latitude)
+            return *self.cells.fraction(x, y), self.cells.holds(x, y)
         crs = self.crs
         to_grid = pyproj.Transformer.from_crs("EPSG:4326", crs, always_xy=True)
         x, y = to_grid.transform(longitude, latitude)
@@ -96,15 +146,7 @@ class FieldFile:
         if not crs.is_projected:  # the grid may count longitudes from 0 to 360
             x = columns.mean() + (np.asarray(x) - columns.mean() + 180.0) % 360.0 - 180.0
         column, row = _fractional(columns, x), _fractional(rows, y)
-        inside = _within(column, len(columns)) & _within(row, len(rows))
-        low_column, right = _split(column, len(columns))
-        low_row, upper = _split(row, len(rows))
-        return Corners(
-            np.stack([low_row, low_row, low_row + 1, low_row + 1]),
-            np.stack([low_column, low_column + 1, low_column, low_column + 1]),
-            np.stack([(1 - upper) * (1 - right), (1 - upper) * right,
-                      upper * (1 - right), upper * right]),
-        ), inside  # fmt: skip
+        return row, column, _within(column, len(columns)) & _within(row, len(rows))
 
     def terrain_at(self, corners: Corners):
         """Height of the terrain (n,) [m] between cells."""
@@ -189,9 +231,8 @@ def _check_content(path: Path, dataset: xr.Dataset) -> None:
 
 
 def _check_together(earlier: FieldFile, later: FieldFile) -> None:
-    for axis in ("x", "y"):
-        one, other = earlier.dataset[axis].values, later.dataset[axis].values
-        if len(one) != len(other) or not np.allclose(one, other):
+    for one, other in zip(earlier.places, later.places, strict=True):
+        if one.shape != other.shape or not np.allclose(one, other):
             raise InputError(
                 f"{later.path}: its grid differs from that of {earlier.path}, expected the same."
             )

@@ -41,6 +41,7 @@ def export_fields(
         )
     written = []
     for fields in open_fields(paths):
+        fields.check_even(form)
         first, last = fields.steps
         kept = np.ones(len(first), bool)
         kept &= True if start is None else first >= start

@@ -1,6 +1,8 @@
-"""The grid that the fields lie on, in any CRS.
+"""The grid that the fields lie on, in any CRS: evenly spaced, or cells of any shape.
 
-South row first, west column first: `y` and `x` ascend.
+`Grid` and `cells.CellGrid` have in common: crs, shape, is_even, is_projected, description,
+identity, longitude_latitude, contains. Along axes `y` and `x` ascend: south row first, west column
+first.
 """
 
 from __future__ import annotations
@@ -13,6 +15,15 @@ import numpy as np
 import pyproj
 
 from fieldgen.errors import GridError
+from fieldgen.ground.cells import CellGrid
+from fieldgen.ground.cf_grid import (
+    axis_of,
+    cells_of_axes,
+    file_crs,
+    has_axes,
+    read_axis,
+    read_cells,
+)
 from fieldgen.input_files import check_is_file
 from fieldgen.settings import MOST_CELLS
 
@@ -38,6 +49,11 @@ class Grid:
         return cls(read_crs(crs, "grid.crs"), x, y, (spacing, spacing))
 
     @property
+    def is_even(self) -> bool:
+        """Whether all cells are alike, in rows and columns of the CRS."""
+        return True
+
+    @property
     def shape(self) -> tuple[int, int]:
         """(ny, nx)."""
         return len(self.y), len(self.x)
@@ -55,6 +71,22 @@ class Grid:
         """Whether x and y are lengths rather than degrees."""
         return self.crs.is_projected
 
+    @property
+    def description(self) -> str:
+        """Size of the cells and CRS, for people."""
+        return f"cells of {self.spacing[0]:g} in {self.crs.name}"
+
+    @property
+    def identity(self) -> bytes:
+        """What tells the grid from another."""
+        return repr((self.crs.to_wkt(), self.bounds, self.shape)).encode()
+
+    @property
+    def axis_bounds(self) -> tuple[np.ndarray, np.ndarray]:
+        """Contiguous bounds (nx, 2) of the columns and (ny, 2) of the rows."""
+        dx, dy = self.spacing
+        return _contiguous(self.x, dx), _contiguous(self.y, dy)
+
     @cached_property
     def longitude_latitude(self):
         """Longitude and latitude (ny, nx) [degrees] of the cell centres."""
@@ -65,6 +97,18 @@ class Grid:
         """Grid coordinates x, y (n,) of points in degrees; not finite where the CRS fails."""
         to_grid = pyproj.Transformer.from_crs("EPSG:4326", self.crs, always_xy=True)
         return to_grid.transform(longitude, latitude)
+
+    def contains(self, longitude, latitude):
+        """Whether points (n,) [degrees] lie on the grid."""
+        x, y = (np.asarray(part) for part in self.locate(longitude, latitude))
+        west, south, east, north = self.bounds
+        return (x >= west) & (x <= east) & (y >= south) & (y <= north)
+
+
+def _contiguous(centres, spacing: float):
+    """Bounds (n, 2)."""
+    edges = np.append(centres - spacing / 2, centres[-1] + spacing / 2)
+    return np.stack([edges[:-1], edges[1:]], axis=1)
 
 
 def read_crs(text: str, where: str) -> pyproj.CRS:
@@ -79,59 +123,61 @@ def read_crs(text: str, where: str) -> pyproj.CRS:
     return crs
 
 
-def read_grid(path: Path) -> Grid:
-    """Grid of a CF NetCDF file with one-dimensional coordinates, evenly spaced.
+def read_grid(path: Path) -> Grid | CellGrid:
+    """Grid of a CF NetCDF file: along one-dimensional coordinates, even or not, or of cells whose
+    longitudes and latitudes the file lists.
 
     The CRS is that of the file's grid mapping; longitude and latitude without one are WGS 84.
+    Raises GridError.
     """
     import xarray as xr
 
     try:
         check_is_file(path)
         with xr.open_dataset(path, decode_times=False) as dataset:
-            x, dx = _axis(dataset, path, ("projection_x_coordinate", "longitude"), "x")
-            y, dy = _axis(dataset, path, ("projection_y_coordinate", "latitude"), "y")
-            if len(x) * len(y) > MOST_CELLS:
-                raise GridError(
-                    f"{path}: cells are {len(x)} x {len(y)}, expected at most {MOST_CELLS}."
-                )
-            return Grid(_file_crs(dataset, path), x, y, (dx, dy))
+            return grid_of(dataset, path)
     except (OSError, ValueError, RuntimeError, LookupError, TypeError, AttributeError) as error:
         reason = getattr(error, "strerror", None) or " ".join(str(error).split())[:200]
         raise GridError(f"{path}: cannot be read as NetCDF: {reason}") from None
 
 
-def _axis(dataset, path: Path, standard_names, letter: str):
-    """Ascending cell centres and spacing of the dataset's axis."""
-    axes = [
-        variable
-        for variable in dataset.coords.values()
-        if variable.ndim == 1 and variable.attrs.get("standard_name") in standard_names
-    ]
-    units = [variable.attrs.get("units") for variable in axes]
-    if len(axes) != 1:
+def grid_of(dataset, where) -> Grid | CellGrid:
+    """The same of an opened dataset; errors name `where` it comes from."""
+    if not has_axes(dataset):
+        return read_cells(dataset, where)
+    x, y = (read_axis(dataset, where, letter) for letter in "xy")
+    if len(x.centres) * len(y.centres) > MOST_CELLS:
         raise GridError(
-            f"{path}: {len(axes)} one-dimensional {letter} coordinates, expected one with "
-            f"standard_name {' or '.join(standard_names)}."
+            f"{where}: cells are {len(x.centres)} x {len(y.centres)}, expected at most "
+            f"{MOST_CELLS}."
         )
-    if axes[0].size > MOST_CELLS:
-        raise GridError(
-            f"{path}: {letter} has {axes[0].size} values, expected at most {MOST_CELLS}."
-        )
-    centres = np.sort(axes[0].values.astype(float)) * (1000.0 if units == ["km"] else 1.0)
-    steps = np.diff(centres)
-    if len(steps) < 1 or not steps.min() > 0.0 or not np.allclose(steps, steps.mean(), rtol=1e-3):
-        raise GridError(f"{path}: {letter} is not evenly spaced, expected cells of equal size.")
-    return centres, float(steps.mean())
+    crs = file_crs(dataset, where)
+    _check_kind(crs, x.name, where)
+    if x.even and y.even and not x.name.startswith("grid_"):
+        steps = (float(np.diff(axis.centres).mean()) for axis in (x, y))
+        return Grid(crs, x.centres, y.centres, tuple(steps))
+    return cells_of_axes(crs, x, y)
 
 
-def _file_crs(dataset, path: Path) -> pyproj.CRS:
-    mappings = [
-        variable for variable in dataset.variables.values() if "grid_mapping_name" in variable.attrs
-    ]
-    if not mappings:
-        return pyproj.CRS.from_epsg(4326)
-    try:
-        return pyproj.CRS.from_cf(mappings[0].attrs)
-    except (pyproj.exceptions.CRSError, KeyError) as error:
-        raise GridError(f"{path}: its grid mapping cannot be understood: {error}.") from None
+def _check_kind(crs: pyproj.CRS, name: str, where) -> None:
+    """Coordinates on a plane or a turned globe mean nothing without the CRS that they belong to."""
+    needed = {"projection_x_coordinate": crs.is_projected, "grid_longitude": crs.is_derived}
+    if not needed.get(name, True):
+        raise GridError(
+            f"{where}: its grid mapping is {crs.name}, expected one that fits {name}. Add a "
+            "grid_mapping variable to the file."
+        )
+
+
+def uneven_cells(fields, where) -> CellGrid | None:
+    """Cells of a dataset of fields; None where they are evenly spaced along x and y.
+
+    Of cells that x and y do not tell, being rows and columns, the file lists the corners.
+    """
+    if "longitude" in fields.variables and "bounds" in fields["longitude"].attrs:
+        return grid_of(fields, where)
+    if "x" in fields.variables and "y" in fields.variables:
+        axes = [axis_of(fields, where, fields[letter], letter) for letter in "xy"]
+        if all(axis.even and not axis.name.startswith("grid_") for axis in axes):
+            return None
+    return grid_of(fields, where)

@@ -14,6 +14,8 @@ from rasterio.transform import from_bounds
 from rasterio.warp import reproject, transform_bounds
 
 from fieldgen.errors import GridError, InputError
+from fieldgen.ground.cell_heights import bounds_in, heights_in_cells
+from fieldgen.ground.cells import CellGrid
 from fieldgen.ground.grid import Grid
 from fieldgen.input_files import check_is_file
 
@@ -54,7 +56,7 @@ class Terrain:
         return self.points.std(axis=0)
 
 
-def read_terrain(path: Path, grid: Grid, lowest_land: float = SEA_LEVEL) -> Terrain:
+def read_terrain(path: Path, grid: Grid | CellGrid, lowest_land: float = SEA_LEVEL) -> Terrain:
     """Terrain of a raster file (GeoTIFF, NetCDF or another format of GDAL) under a grid.
 
     What lies at `lowest_land` [m] or below is sea, at height 0 however deep it is.
@@ -63,18 +65,26 @@ def read_terrain(path: Path, grid: Grid, lowest_land: float = SEA_LEVEL) -> Terr
     """
     with _raster(path, "terrain") as raster:
         _check_covers(raster, path, grid)
-        side = min(_pixels_per_cell(raster, grid), MOST_POINTS)
-        fine = _resample(raster, grid, max(round(side), 1), finer=side >= 1)
-    ny, nx = grid.shape
-    side = len(fine) // ny
-    if not fine.max() <= HIGHEST_LAND:
+        if grid.is_even:
+            points = _even_heights(raster, grid)
+        else:
+            points = heights_in_cells(raster, grid, MOST_POINTS, SEA_LEVEL)
+    if not points.max() <= HIGHEST_LAND:
         raise InputError(
-            f"{path}: the terrain is {fine.max():.7g} m, expected at most {HIGHEST_LAND:g} m. Name "
-            "the value that stands for none in the file."
+            f"{path}: the terrain is {points.max():.7g} m, expected at most {HIGHEST_LAND:g} m. "
+            "Name the value that stands for none in the file."
         )
-    points = fine.reshape(ny, side, nx, side).transpose(1, 3, 0, 2).reshape(-1, ny, nx)
     sea = points <= lowest_land
     return Terrain(np.where(sea, np.float32(SEA_LEVEL), points), sea.all(axis=0))
+
+
+def _even_heights(raster, grid: Grid):
+    """Heights (k, ny, nx) at points spread evenly over cells of equal size."""
+    side = min(_pixels_per_cell(raster, grid), MOST_POINTS)
+    fine = _resample(raster, grid, max(round(side), 1), finer=side >= 1)
+    ny, nx = grid.shape
+    side = len(fine) // ny
+    return fine.reshape(ny, side, nx, side).transpose(1, 3, 0, 2).reshape(-1, ny, nx)
 
 
 def read_raster_at(path: Path, longitude, latitude, what: str):
@@ -99,9 +109,12 @@ def _raster(path: Path, what: str):
         raise InputError(f"{path}: the {what} file cannot be read as a raster: {reason}.") from None
 
 
-def _check_covers(raster, path: Path, grid: Grid) -> None:
+def _check_covers(raster, path: Path, grid: Grid | CellGrid) -> None:
     """The grid's cells must lie inside the raster; its resolution is allowed as slack."""
-    bounds = transform_bounds(grid.crs.to_wkt(), raster.crs, *grid.bounds, densify_pts=21)
+    if grid.is_even:
+        bounds = transform_bounds(grid.crs.to_wkt(), raster.crs, *grid.bounds, densify_pts=21)
+    else:
+        bounds = bounds_in(raster, grid)
     if not np.isfinite(bounds).all():
         raise GridError(
             f"grid: its edges have no place in {grid.crs.name}. Check grid.crs and the edges."

@@ -11,6 +11,7 @@ import numpy as np
 import xarray as xr
 
 from fieldgen.errors import InputError
+from fieldgen.products.even_picture import on_even_grid
 from fieldgen.products.lines import NAMES
 from fieldgen.products.maps import read_geometries
 
@@ -42,12 +43,12 @@ class ProductFolder:
         }
         if not self._files:
             raise InputError(f"{path}: holds no field files, expected those of a run. Run make.")
-        with _open(self._files[max(self._files)]) as newest:
+        with _open_fields(self._files[max(self._files)]) as newest:
             self.newest = newest.isel(time=[-1]).load()
             self.end = newest["time"].values[-1].astype("datetime64[s]")
         bounds = self.newest["time_bnds"].values[0].astype("datetime64[s]")
         self.step = bounds[1] - bounds[0]
-        with _open(self._files[min(self._files)]) as oldest:
+        with _open_fields(self._files[min(self._files)]) as oldest:
             self.start = oldest["time"].values[0].astype("datetime64[s]") - self.step
 
     @property
@@ -95,7 +96,7 @@ class ProductFolder:
             if file is None:
                 yield from (Step(one - self.step, one, None) for one in ends[days == day])
                 continue
-            with _open(file) as fields:
+            with _open_fields(file) as fields:
                 self._check_grid(file, fields)
                 held = fields["time"].values.astype("datetime64[s]")
                 for one in ends[days == day]:
@@ -157,6 +158,11 @@ def _may_hold(day: str, start, end) -> bool:
     date = np.datetime64(f"{day[:4]}-{day[4:6]}-{day[6:]}", "s")
     one = np.timedelta64(1, "D")
     return (start is None or date + one > start) and (end is None or date < end)
+
+
+def _open_fields(file: Path) -> xr.Dataset:
+    """Fields as a picture shows them."""
+    return on_even_grid(_open(file), file)
 
 
 def _open(file: Path) -> xr.Dataset:

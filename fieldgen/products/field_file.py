@@ -7,6 +7,7 @@ from pathlib import Path
 import numpy as np
 import xarray as xr
 
+from fieldgen.ground.cells import CellGrid
 from fieldgen.ground.grid import Grid
 from fieldgen.products.atomic import whole_file
 from fieldgen.products.metadata import (
@@ -31,7 +32,7 @@ _SUMMARY = (
 
 def packed_dataset(
     *,
-    grid: Grid,
+    grid: Grid | CellGrid,
     terrain_height,
     terrain_sd,
     time,
@@ -82,7 +83,7 @@ def packed_dataset(
             ),
             "crs": ((), np.int32(0), grid.crs.to_cf()),
         },
-        coords=_coordinates(grid, time, network.time_step),
+        coords=time_coordinates(time, network.time_step) | _cell_coordinates(grid),
         attrs=global_attributes(
             title="precipitable water vapour",
             summary=_SUMMARY,
@@ -92,7 +93,7 @@ def packed_dataset(
             bounds=_geographic_bounds(grid),
         ),
     )  # fmt: skip
-    dataset = dataset.reset_coords(["time_bnds", "y_bnds", "x_bnds"])
+    dataset = dataset.reset_coords([name for name in dataset.coords if name.endswith("_bnds")])
     dataset.attrs["processing"] = processing
     for name in ("pwv", "pwv_sigma", "pwv_at_reference", "flag", "terrain", "terrain_sd"):
         dataset[name].attrs["grid_mapping"] = "crs"
@@ -150,25 +151,51 @@ def _terrain_attributes(name: str, method: str) -> dict:
     return QUANTITIES[name].attributes() | {"cell_methods": f"area: {method}"}
 
 
-def _coordinates(grid: Grid, time, step) -> dict:
+def _cell_coordinates(grid: Grid | CellGrid) -> dict:
+    """Coordinates and bounds of the cells: along x and y, or the corners of each."""
+    if not grid.is_even and not grid.along_axes:
+        return _coordinates_of_places(grid)
     x, y = _axis_attributes(grid)
+    centres = (grid.x, grid.y) if grid.is_even else (grid.x[0], grid.y[:, 0])
+    bounds = grid.axis_bounds
     coordinates = {
-        **time_coordinates(time, step),
-        "y": ("y", grid.y, y),
-        "x": ("x", grid.x, x),
-        "y_bnds": (("y", "bounds"), _cell_bounds(grid.y, grid.spacing[1])),
-        "x_bnds": (("x", "bounds"), _cell_bounds(grid.x, grid.spacing[0])),
+        "y": ("y", centres[1], y),
+        "x": ("x", centres[0], x),
+        "y_bnds": (("y", "bounds"), bounds[1]),
+        "x_bnds": (("x", "bounds"), bounds[0]),
     }
-    if grid.is_projected:
+    if grid.is_projected or grid.crs.is_derived:
         longitude, latitude = grid.longitude_latitude
         for name, values in (("latitude", latitude), ("longitude", longitude)):
             coordinates[name] = (("y", "x"), values, QUANTITIES[name].attributes())
     return coordinates
 
 
-def _axis_attributes(grid: Grid) -> tuple[dict, dict]:
+def _coordinates_of_places(grid: CellGrid) -> dict:
+    """Longitude and latitude (y, x) of each cell, and of its four corners; rows and columns."""
+    coordinates = {}
+    for axis, what, count in zip("yx", ("row", "column"), grid.shape, strict=True):
+        about = {"long_name": f"{what} of the model's grid", "units": "1", "axis": axis.upper(),
+                 "coverage_content_type": "coordinate"}  # fmt: skip
+        coordinates[axis] = (axis, np.arange(count, dtype=np.int32), about)
+    for name, centre, corner in (
+        ("latitude", grid.y, grid.corner_y), ("longitude", grid.x, grid.corner_x)
+    ):  # fmt: skip
+        attributes = QUANTITIES[name].attributes() | {"bounds": f"{name}_bnds"}
+        coordinates[name] = (("y", "x"), centre, attributes)
+        coordinates[f"{name}_bnds"] = (("y", "x", "corners"), corner)
+    return coordinates
+
+
+def _axis_attributes(grid: Grid | CellGrid) -> tuple[dict, dict]:
     x = {"bounds": "x_bnds", "axis": "X"}
     y = {"bounds": "y_bnds", "axis": "Y"}
+    if grid.crs.is_derived and not grid.is_projected:
+        for axis, name in ((x, "longitude"), (y, "latitude")):
+            axis["standard_name"] = f"grid_{name}"
+            axis["long_name"] = f"{name} in the rotated system"
+            axis["units"] = "degrees"
+        return x, y
     if not grid.is_projected:
         return x | QUANTITIES["longitude"].attributes(), y | QUANTITIES["latitude"].attributes()
     unit = grid.crs.axis_info[0].unit_name
@@ -180,13 +207,7 @@ def _axis_attributes(grid: Grid) -> tuple[dict, dict]:
     return x, y
 
 
-def _cell_bounds(centres, spacing: float):
-    """Contiguous bounds (n, 2)."""
-    edges = np.append(centres - spacing / 2, centres[-1] + spacing / 2)
-    return np.stack([edges[:-1], edges[1:]], axis=1)
-
-
-def _geographic_bounds(grid: Grid):
+def _geographic_bounds(grid: Grid | CellGrid):
     longitude, latitude = grid.longitude_latitude
     return longitude.min(), latitude.min(), longitude.max(), latitude.max()
 
@@ -203,7 +224,8 @@ def _set_encoding(dataset: xr.Dataset) -> None:
         dataset[name].encoding = {"dtype": "float32", "_FillValue": None}
     dataset["station_count"].encoding = {"dtype": "int16", "_FillValue": None}
     for name in ("x", "y", "x_bnds", "y_bnds"):
-        dataset[name].encoding = {"_FillValue": None}
-    for name in ("latitude", "longitude"):
-        if name in dataset.coords:
+        if name in dataset.variables:
+            dataset[name].encoding = {"_FillValue": None}
+    for name in ("latitude", "longitude", "latitude_bnds", "longitude_bnds"):
+        if name in dataset.variables:
             dataset[name].encoding = {"dtype": "float64", "_FillValue": None, **COMPRESSION}

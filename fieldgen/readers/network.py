@@ -12,6 +12,7 @@ import numpy as np
 import xarray as xr
 
 from fieldgen.errors import InputError
+from fieldgen.ground.cells import CellGrid
 from fieldgen.ground.grid import Grid, read_grid
 from fieldgen.ground.terrain import Terrain, read_terrain
 from fieldgen.readers.formats import read_delays, read_weather
@@ -51,7 +52,7 @@ class Network:
     """
 
     settings: Settings
-    grid: Grid
+    grid: Grid | CellGrid
     terrain: Terrain
     stations: xr.Dataset
     delays: xr.Dataset
@@ -144,7 +145,7 @@ def _check_lines(settings: Settings) -> None:
             raise InputError(f"products.{name}: {settings.path(path)} is not a file.")
 
 
-def _read_grid(settings: Settings) -> Grid:
+def _read_grid(settings: Settings) -> Grid | CellGrid:
     table = settings.grid
     if table.like is not None:
         return read_grid(settings.path(table.like))

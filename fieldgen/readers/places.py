@@ -8,6 +8,7 @@ import numpy as np
 import xarray as xr
 
 from fieldgen.errors import GridError, InputError
+from fieldgen.ground.cells import CellGrid
 from fieldgen.ground.geoid import undulation
 from fieldgen.ground.grid import Grid
 from fieldgen.ground.terrain import read_raster_at
@@ -34,7 +35,7 @@ STATION_MARGIN = 2.0
 
 def locate_stations(
     settings: Settings,
-    grid: Grid,
+    grid: Grid | CellGrid,
     named: Identities,
     report: ReadingReport,
 ) -> xr.Dataset:
@@ -190,7 +191,7 @@ def _undulation(settings: Settings, column):
     return np.where(np.isfinite(column["undulation"]), column["undulation"], everywhere)
 
 
-def _near_grid(settings: Settings, grid: Grid, stations: xr.Dataset, report: ReadingReport):
+def _near_grid(settings: Settings, grid, stations: xr.Dataset, report: ReadingReport):
     """Stations within reach of the grid; raises GridError if there is none."""
     reach = STATION_MARGIN * settings.kriging.far_distance
     away = _distance_to_grid(grid, stations.longitude.values, stations.latitude.values)
@@ -207,15 +208,12 @@ def _near_grid(settings: Settings, grid: Grid, stations: xr.Dataset, report: Rea
     return stations.isel(station=near)
 
 
-def _distance_to_grid(grid: Grid, longitude, latitude):
+def _distance_to_grid(grid: Grid | CellGrid, longitude, latitude):
     """Distance (n,) [km] of each place to the nearest of the grid's cells, zero inside it."""
     cells = tuple(part.ravel() for part in grid.longitude_latitude)
-    x, y = (np.asarray(part) for part in grid.locate(longitude, latitude))
-    west, south, east, north = grid.bounds
-    inside = (x >= west) & (x <= east) & (y >= south) & (y <= north)
     position, cell_position = chord_positions(longitude, latitude), chord_positions(*cells)
     nearest = [np.linalg.norm(cell_position - place, axis=1).min() for place in position]
-    return np.where(inside, 0.0, nearest)
+    return np.where(grid.contains(longitude, latitude), 0.0, nearest)
 
 
 def _check_reference_height(settings: Settings, stations: xr.Dataset) -> None:

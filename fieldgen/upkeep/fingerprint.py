@@ -66,11 +66,10 @@ def fingerprint_maps(settings: Settings, limits: tuple[float, float]) -> str:
 def _sort_content(network: Network) -> tuple[list[bytes], list[list[bytes]]]:
     """Content that all days share, and that of each step; every variable along time is of steps."""
     settings = network.settings.model_dump_json(exclude={"folder", "stations", "products"})
-    grid = network.grid
     shared = [
         fieldgen_version().encode(),
         settings.encode(),
-        repr((grid.crs.to_wkt(), grid.bounds, grid.shape)).encode(),
+        network.grid.identity,
         network.terrain.points.tobytes(),
         network.terrain.is_sea.tobytes(),
     ]

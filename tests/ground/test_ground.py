@@ -148,14 +148,3 @@ def test_grid_like_a_file_has_its_cells_and_crs(tmp_path):
     assert back.x.tolist() == one.x.tolist()
     assert back.y.tolist() == one.y.tolist()
     assert back.crs == one.crs
-
-
-def test_grid_like_needs_even_spacing(tmp_path):
-    """Negative control."""
-    dataset = xr.Dataset(coords={
-        "lon": ("lon", [0.0, 1.0, 3.0], {"standard_name": "longitude"}),
-        "lat": ("lat", [0.0, 1.0, 2.0], {"standard_name": "latitude"}),
-    })  # fmt: skip
-    dataset.to_netcdf(tmp_path / "model.nc")
-    with pytest.raises(GridError, match="not evenly spaced"):
-        read_grid(tmp_path / "model.nc")

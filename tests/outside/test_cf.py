@@ -21,6 +21,9 @@ from rasterio.transform import rowcol
 from fieldgen import read_network
 from fieldgen.chain import make
 from fieldgen.cli import main
+from tests.ground.test_cells import listed, projected, rotated, turned_degrees
+from tests.scene import write_scene
+from tests.test_model_grid import LIKE
 
 checker = pytest.importorskip("compliance_checker.runner", reason="compliance-checker judges")
 
@@ -68,6 +71,52 @@ def files(tmp_path_factory) -> dict[str, Path]:
         "daily": folder / "daily/daily_20260908.nc",
         "draws": folder / "draws/draws_20260908.nc",
     }
+
+
+@pytest.fixture(scope="module", params=["axes", "listed", "rotated"])
+def model_files(request, tmp_path_factory) -> list[Path]:
+    """Field, daily and draws file of a scene on a model's grid: uneven axes, places, rotated."""
+    folder = tmp_path_factory.mktemp(request.param)
+    x, y = [322e3, 330e3, 342e3, 362e3, 376e3], [5224e3, 5240e3, 5252e3, 5272e3]
+    if request.param == "axes":
+        model = projected(x, y)
+    elif request.param == "listed":
+        model = listed(*turned_degrees()[0])
+    else:
+        model = rotated()
+    model.to_netcdf(folder / "model.nc")
+    path = write_scene(folder, settings=LIKE)
+    assert main(["make", str(path), "--out", str(folder / "out"), "--jobs", "1"]) == 0
+    assert main(["daily", str(folder / "out")]) == 0
+    assert main(["draws", str(path), "--count", "3", "--out", str(folder / "out")]) == 0
+    return sorted(
+        file for kind in ("fields", "daily", "draws") for file in (folder / "out" / kind).iterdir()
+    )
+
+
+ROWS_AND_COLUMNS = (
+    "latitude variable 'y' should define valid units for latitude",
+    "longitude variable 'x' should define valid units for longitude",
+)
+"""The checker takes every axis X or Y that is not of a projection for longitude or latitude; those
+of CF's own example 5.2, beside two-dimensional longitude and latitude, are neither."""
+
+
+@pytest.mark.parametrize("standard", ["cf:1.11", "acdd:1.3"])
+def test_files_on_a_model_grid_have_no_finding(model_files, tmp_path, standard):
+    """Another library: compliance-checker, strict, on fields, daily fields and draws."""
+    assert len(model_files) == 3
+    for path in model_files:
+        findings = judge(path, standard, tmp_path)
+        assert len(findings) > 15
+        unfulfilled = [one for one in findings if one["value"][0] < one["value"][1]]
+        if standard == "cf:1.11":
+            found = [message for one in unfulfilled for message in one["msgs"]]
+            assert not [one for one in found if one not in ROWS_AND_COLUMNS]
+            continue
+        for one in (one for one in unfulfilled if one["weight"] == 3):
+            assert one["msgs"] == ["standard_name"]
+            assert re.search(r'variable "(\w+)"', one["name"])[1] in NO_STANDARD_NAME
 
 
 def judge(path: Path, standard: str, folder: Path) -> list[dict]:

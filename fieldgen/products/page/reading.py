@@ -12,6 +12,7 @@ import numpy as np
 import xarray as xr
 
 from fieldgen.errors import InputError
+from fieldgen.products.even_picture import on_even_grid
 
 FIELDS = ("pwv", "pwv_sigma", "pwv_at_reference", "flag")
 SERIES = ("pwv", "pwv_sigma", "residual", "residual_sigma")
@@ -93,7 +94,7 @@ def _newest_days(files: list[Path], last: timedelta | None) -> Iterator[tuple[Pa
     """Field files from the newest back, cut to the hours that are asked for."""
     first = None
     for path in files:
-        dataset = _load(path, _NEEDED_FIELDS, "fields")
+        dataset = on_even_grid(_load(path, _NEEDED_FIELDS, "fields"), path)
         time = dataset["time"].values
         if first is None and last is not None:
             first = time[-1] - np.timedelta64(int(last.total_seconds()), "s")
