@@ -419,11 +419,11 @@ def test_the_same_size_within_the_clock_s_step_is_seen(tmp_path):
 
 
 def test_a_week_of_operation_ends_as_one_run_over_the_complete_input(tmp_path):
-    """Round trip: an update every six hours while files come late, twice, wrong and broken.
+    """Round trip: an update every twelve hours while files come late, twice, wrong and broken.
 
     Memory and open files of the second half of the week are those of the first.
     """
-    week = simulate(tmp_path, every=6)
+    week = simulate(tmp_path, every=12)
     assert_same_products(tmp_path / "updated", tmp_path / "whole")
     made, updates = sum(week.days_made), len(week.days_made)
     assert made < 3 * updates, "updates remade days that nothing had changed"

@@ -130,8 +130,14 @@ class ProductFolder:
             raise InputError(f"{self.path}: holds no station files of the period. Run make.")
         series = xr.concat(
             [day.reset_coords(drop=True) for day in days],
-            "time", join="outer", fill_value={"flag": NO_VALUE}, combine_attrs="override",
-        )  # fmt: skip
+            "time",
+            data_vars="minimal",
+            coords="minimal",
+            compat="override",
+            join="outer",
+            fill_value={"flag": NO_VALUE},
+            combine_attrs="override",
+        )
         series = series.assign_coords(_newest_places(days, series["station"].values))
         time = series["time"].values.astype("datetime64[s]")
         low = time[0] if start is None else start + np.timedelta64(1, "s")
