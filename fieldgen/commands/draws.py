@@ -22,7 +22,7 @@ def add(commands) -> None:
         commands,
         "draws",
         "draw equally likely fields, for what depends on cells and hours together",
-        "fieldgen draws demo_network/network.toml --count 50 --start 2026-09-09 --end 2026-09-10",
+        "fieldgen draws demo_network/network.toml --count 10 --start 2026-09-09 --end 2026-09-10",
         _run,
     )
     add_network(parser)

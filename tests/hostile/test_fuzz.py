@@ -24,7 +24,7 @@ def test_spoilt_files_are_read_or_refused(tmp_path, target):
     path = tmp_path / "file"
 
     @settings(
-        max_examples=60 if target.cost == 1 else 6,
+        max_examples=30 if target.cost == 1 else 6,
         deadline=None,
         derandomize=True,
         database=None,
