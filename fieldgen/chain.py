@@ -103,6 +103,4 @@ def maps_of_day(maps: str, is_last: bool) -> str:
 def pieces_of(network: Network, start: str | None, end: str | None) -> list[Piece]:
     """The days of a network that a period touches; raises InputError as `pieces` does."""
     step = np.timedelta64(int(network.settings.network.time_step.total_seconds()), "s")
-    delays = network.delays
-    has_data = np.isfinite(delays.ztd.values) | np.isfinite(delays.pwv.values)
-    return pieces(delays.time.values, step, has_data.any(axis=1), start, end)
+    return pieces(network.delays.time.values, step, network.has_delay, start, end)

@@ -157,18 +157,22 @@ class DayWriter:
         self._record(task, report)
         return report
 
+    @cached_property
+    def maps_fingerprint(self) -> str:
+        """Fingerprint of the maps' colours and lines."""
+        return fingerprint_maps(self.maker.network.settings, self.limits)
+
     def _record(self, task: Task, report: DayReport) -> None:
         """Leave the day's record; maps that the day no longer has are removed."""
         piece = task.piece
         whole = task.maps == "latest" or piece.asked == slice(0, piece.last - piece.first)
-        settings = self.maker.network.settings
         before = read_day_record(self.folder, piece.name)
         record = DayRecord(
             shared=self.fingerprints.shared,
             length=self.fingerprints.length,
             window=self.fingerprints.of_steps(self.maker.rows(piece)),
             steps=self.fingerprints.stamps[piece.first : piece.last],
-            maps=fingerprint_maps(settings, self.limits) if whole else "",
+            maps=self.maps_fingerprint if whole else "",
             files=sizes_of(self.folder, report.files),
             report=report,
         )

@@ -20,7 +20,7 @@ from fieldgen.products.atomic import whole_file
 from fieldgen.readers.network import Network, read_network
 from fieldgen.settings import Settings, read_settings
 from fieldgen.upkeep.day_record import DayRecord, forget_day, read_day_record, recorded_days
-from fieldgen.upkeep.fingerprint import NOTHING, Fingerprints, fingerprint_maps
+from fieldgen.upkeep.fingerprint import NOTHING, Fingerprints
 from fieldgen.upkeep.inputs import Standing, list_inputs, read_standing, write_inputs
 from fieldgen.upkeep.lock import STATE, hold
 
@@ -178,7 +178,7 @@ class _Plan:
             self.standing[day.name] = record.report
         elif reason := _what_changed(record, prints, writer.maker.rows(day)):
             self.tasks.append((task, reason))
-        elif task.maps != "none" and record.maps != fingerprint_maps(settings, writer.limits):
+        elif task.maps != "none" and record.maps != writer.maps_fingerprint:
             self.tasks.append((replace(task, only_maps=True), "its maps are not drawn like this"))
         else:
             self.standing[day.name] = record.report
@@ -197,11 +197,10 @@ def _has_lost_input(record: DayRecord, prints: Fingerprints) -> bool:
 
     After a change of the length of a step only the beginning of the input can tell.
     """
-    now = dict(zip(prints.stamps, prints.steps, strict=True))
     if record.length != prints.length:
         return _begin(record.steps[0], record.length) < _begin(prints.stamps[0], prints.length)
     had = (stamp for stamp in record.steps if record.window[stamp] != NOTHING)
-    return any(now.get(stamp, NOTHING) == NOTHING for stamp in had)
+    return any(prints.by_stamp.get(stamp, NOTHING) == NOTHING for stamp in had)
 
 
 def _begin(stamp: str, length: int) -> np.datetime64:

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+from fieldgen.products.maps.layout import MapPlace
+
 Box = tuple[int, int, int, int]
 """Left, bottom, width, height [pixels]."""
 
@@ -92,7 +94,7 @@ PAGE = Shape(
 
 
 @dataclass(frozen=True)
-class PosterLayout:
+class PosterLayout(MapPlace):
     """A shape with the map of a grid in it."""
 
     shape: Shape
@@ -102,22 +104,6 @@ class PosterLayout:
     def size(self) -> tuple[int, int]:
         """Width and height."""
         return self.shape.size
-
-    @property
-    def map_shape(self) -> tuple[int, int]:
-        """Rows and columns of the map."""
-        return self.map_box[3], self.map_box[2]
-
-    @property
-    def map_corner(self) -> tuple[int, int]:
-        """Column and row of the map's upper left pixel, counted from that of the picture."""
-        left, bottom, _, height = self.map_box
-        return left, self.size[1] - bottom - height
-
-    def fractions(self, box: Box) -> tuple[float, float, float, float]:
-        """A box as fractions of the picture."""
-        width, height = self.size
-        return box[0] / width, box[1] / height, box[2] / width, box[3] / height
 
 
 def plan_poster(shape: Shape, aspect: float) -> PosterLayout:

@@ -60,6 +60,12 @@ class Network:
     report: ReadingReport
     weather_grid: xr.Dataset | None = None
 
+    @property
+    def has_delay(self) -> np.ndarray:
+        """Steps (t,) bool at which any station has a delay or water vapour."""
+        found = np.isfinite(self.delays.ztd.values) | np.isfinite(self.delays.pwv.values)
+        return found.any(axis=1)
+
 
 def read_network(path: str | Path, progress: Callable[[str], None] = lambda file: None) -> Network:
     """Network of a settings file: everything is read, checked and brought to one time grid.

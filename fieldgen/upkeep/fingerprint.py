@@ -6,6 +6,7 @@ A day comes out the same as long as they stay the same.
 from __future__ import annotations
 
 from dataclasses import dataclass, fields
+from functools import cached_property
 from hashlib import blake2b
 
 import numpy as np
@@ -42,14 +43,17 @@ class Fingerprints:
         """Fingerprints of all that a network's days are made from."""
         shared, by_step = _sort_content(network)
         stamps = np.datetime_as_string(network.delays.time.values, unit="m").tolist()
-        delays = network.delays
-        has_delay = np.isfinite(delays.ztd.values) | np.isfinite(delays.pwv.values)
         steps = [
-            _digest(step) if any_delay else NOTHING
-            for step, any_delay in zip(by_step, has_delay.any(axis=1), strict=True)
+            _digest(step) if has_delay else NOTHING
+            for step, has_delay in zip(by_step, network.has_delay, strict=True)
         ]
         length = int(network.settings.network.time_step.total_seconds() // 60)
         return cls(_digest(shared), length, stamps, steps)
+
+    @cached_property
+    def by_stamp(self) -> dict[str, str]:
+        """Fingerprints of all steps by their stamp."""
+        return dict(zip(self.stamps, self.steps, strict=True))
 
     def of_steps(self, rows: slice) -> dict[str, str]:
         """Fingerprints of some steps by their stamp."""

@@ -11,15 +11,8 @@ LEFT, RIGHT, TOP, BOTTOM = 85, 330, 105, 90  # margins round the map
 EDGE = 30  # between words and the edge of the picture
 
 
-@dataclass(frozen=True)
-class Layout:
-    """Size of a picture, and its map and strip in pixels from the lower left corner."""
-
-    size: tuple[int, int]  # width, height of the picture
-    map_box: tuple[int, int, int, int]  # left, bottom, width, height of the map
-    strip_left: int  # where the strip of colour bar and legend begins
-    strip_bottom: int
-    strip_top: int
+class MapPlace:
+    """Where the map is on a picture: for layouts with a `size` and a `map_box`."""
 
     @property
     def map_shape(self) -> tuple[int, int]:
@@ -36,6 +29,17 @@ class Layout:
         """A box (left, bottom, width, height) as fractions of the picture."""
         width, height = self.size
         return box[0] / width, box[1] / height, box[2] / width, box[3] / height
+
+
+@dataclass(frozen=True)
+class Layout(MapPlace):
+    """Size of a picture, and its map and strip in pixels from the lower left corner."""
+
+    size: tuple[int, int]  # width, height of the picture
+    map_box: tuple[int, int, int, int]  # left, bottom, width, height of the map
+    strip_left: int  # where the strip of colour bar and legend begins
+    strip_bottom: int
+    strip_top: int
 
 
 def plan_layout(aspect: float) -> Layout:
